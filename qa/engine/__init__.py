@@ -1,0 +1,1 @@
+"""Quantities, plans, rule sheets, verdicts, sections and remedies."""

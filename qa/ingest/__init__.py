@@ -1,0 +1,1 @@
+"""Log files of any names and units, turned into canonical logs."""

@@ -1,0 +1,1 @@
+"""Findings as tables, figures and HTML."""

@@ -1,0 +1,1 @@
+"""What needs several lines at once."""
