@@ -420,7 +420,7 @@ def ensonified_area(
     width = _RADIANS * along * slant_range
     beam_limited = _RADIANS * across * slant_range
     with np.errstate(divide="ignore", invalid="ignore"):
-        pulse_limited = resolution / np.sin(_RADIANS * np.abs(angle))
+        pulse_limited: FloatArray = resolution / np.sin(_RADIANS * np.abs(angle))
     # 0/0: straight down, even no pulse at all leaves the question to the beam.
     pulse_limited = chosen((resolution == 0.0) & (angle == 0.0), np.inf, pulse_limited)
     area: FloatArray = width * np.minimum(beam_limited, pulse_limited)
@@ -514,7 +514,7 @@ def detection_threshold_steady(
     """
     detection, false_alarm = floats(chance_of_detection, chance_of_false_alarm)
     with np.errstate(divide="ignore", invalid="ignore"):
-        a = np.log(0.62 / false_alarm)
+        a: FloatArray = np.log(0.62 / false_alarm)
         b = np.log(detection / (1.0 - detection))
         threshold = _decibels(a + 0.12 * a * b + 1.7 * b)
     return threshold
@@ -548,7 +548,7 @@ def detection_threshold_fluctuating(
     Examples
     --------
     >>> round(float(detection_threshold_fluctuating(0.5, 1e-4)), 2)
-    10.9
+    10.89
     """
     detection, false_alarm = floats(chance_of_detection, chance_of_false_alarm)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -708,7 +708,7 @@ def seabed_echo_margin(
     ...     210.0, 100.0, 60.0, 0.05, 70.0, 28.0, 1.0, 1.0, 0.075, 10.0
     ... )
     >>> round(float(margin), 2)
-    23.76
+    23.77
     """
     patch = bottom_strength(
         backscatter_per_area(incidence_angle, backscatter_normal, backscatter_oblique),
@@ -787,7 +787,7 @@ def target_echo_margin(
     ...     210.0, 100.0, 60.0, 0.05, 70.0, 28.0, 1.0, 1.0, 0.075, 10.0, -20.0
     ... )
     >>> round(float(margin), 2)
-    14.24
+    14.23
     """
     patch = bottom_strength(
         backscatter_per_area(incidence_angle, backscatter_normal, backscatter_oblique),
@@ -832,7 +832,7 @@ def greatest_range(
     Notes
     -----
     The last fall is bracketed on 241 ranges in even ratios, then halved: a margin that rises
-    and falls again between two of them (8 % apart at most, with the ranges as given) may be
+    and falls again between two of them (some 4 % apart, with the ranges as given) may be
     overlooked.
 
     Examples
