@@ -157,7 +157,7 @@ def write_csv(path: Path, run: Simulated, dialect: Dialect) -> None:
         if dialect.header:
             writer.writerow([c.heading for c in dialect.columns])
         first = run.channels[0]
-        beams = range(first.beam["depth"].shape[1]) if by_beam and first.beam else range(1)
+        beams = range(first.beam["beam_angle"].shape[1]) if by_beam and first.beam else range(1)
         for i in range(first.ping["time"].size):
             for channel in run.channels:
                 for j in beams:
@@ -243,7 +243,7 @@ def write_parquet(
     n = first.ping["time"].size
     count = 1
     if first.beam is not None and layout == "long":
-        count = first.beam["depth"].shape[1]
+        count = first.beam["beam_angle"].shape[1]
     fields: list[pa.Field] = []
     arrays: list[pa.Array] = []
 
@@ -271,7 +271,7 @@ def write_parquet(
         names = np.repeat(np.tile([channel.name for channel in run.channels], n), count)
         put("channel", pa.array(names.tolist()))
     if first.beam is not None:
-        size = first.beam["depth"].shape[1]
+        size = first.beam["beam_angle"].shape[1]
         for name in ("beam", "beam_angle", "depth", "slant_range", "two_way_time", "accepted"):
             if name == "beam":
                 block = np.tile(np.arange(1, size + 1, dtype=np.int16), (n, 1))
@@ -324,7 +324,7 @@ def read_parquet(path: Path, headings: dict[str, str] | None = None) -> list[Cha
         else:
             ping[name] = column.to_numpy(zero_copy_only=False)[::stride].astype(float)
     if "accepted" not in beam and has_beams:
-        beam["accepted"] = np.ones_like(beam["depth"])
+        beam["accepted"] = np.ones_like(beam["beam_angle"])
     names = [""] if labels is None else list(dict.fromkeys(labels.to_pylist()))
     count = len(names)
     return [
@@ -342,7 +342,7 @@ def write_wide_csv(path: Path, run: Simulated, columns: tuple[Column, ...]) -> N
     path.parent.mkdir(parents=True, exist_ok=True)
     channel = run.channels[0]
     assert channel.beam is not None
-    size = channel.beam["depth"].shape[1]
+    size = channel.beam["beam_angle"].shape[1]
     names = [name for name in ("beam_angle", "depth", "accepted") if name in channel.beam]
     heads = [f"{name}_{j:03d}" for name in names for j in range(1, size + 1)]
     narrow = Dialect(columns)

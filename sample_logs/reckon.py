@@ -121,8 +121,9 @@ def ratios(channel: Channel, setup: Setup) -> dict[str, Array]:
         head = np.where(np.isnan(head), 0.0, head)
         if channel.beam is not None:
             beams = channel.beam
-            depth, good = beams["depth"].astype(float), beams["accepted"].astype(bool)
             angle_logged = beams["beam_angle"].astype(float)
+            good = beams.get("accepted", np.ones(angle_logged.shape)).astype(bool)
+            depth = beams.get("depth", np.full(angle_logged.shape, math.nan)).astype(float)
         else:
             depth, good = ping["depth"].astype(float)[:, None], np.ones((n, 1), dtype=bool)
             angle_logged = np.zeros((n, 1))
@@ -134,14 +135,21 @@ def ratios(channel: Channel, setup: Setup) -> dict[str, Array]:
             angle, from_array = angle_logged - roll, angle_logged
         else:
             angle, from_array = angle_logged, angle_logged + roll
-        height2 = depth - head[:, None] if setup.depth_from == "waterline" else depth
-        reach = height2 / np.cos(np.radians(angle))
+        height = depth if setup.depth_from == "transducer" else depth - head[:, None]
+        if setup.depth_from == "datum":
+            height = height + (ping["tide"] + ping["heave"])[:, None]
+        reach = height / np.cos(np.radians(angle))
+        if channel.beam is not None and "slant_range" in channel.beam:
+            reach = channel.beam["slant_range"].astype(float)
+        if channel.beam is not None and "two_way_time" in channel.beam:
+            reach = channel.beam["two_way_time"].astype(float) * c / 2
+        height = np.where(np.isnan(height), reach * np.cos(np.radians(angle)), height)
         greatest = np.where(good, reach, -np.inf).max(axis=1)
         bottom = 2 * greatest / c
         farthest = np.where(np.isnan(scale), greatest, scale)
         width = across[:, None] / np.cos(np.radians(from_array - setup.mount_angle))
         footprint_along = along_footprint(reach, along[:, None])
-        footprint_across = height2 * (
+        footprint_across = height * (
             np.tan(np.radians(angle + width / 2)) - np.tan(np.radians(angle - width / 2))
         )
         worst_along = np.where(good, footprint_along, -np.inf).max(axis=1)

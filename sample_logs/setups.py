@@ -40,7 +40,11 @@ def merged(survey: dict[str, Any], log: str) -> dict[str, Any]:
 
 
 def setup_for(survey_path: Path, log: str) -> Setup:
-    tables = merged(tomllib.loads(survey_path.read_text(encoding="utf-8")), log)
+    return setup_of(tomllib.loads(survey_path.read_text(encoding="utf-8")), log)
+
+
+def setup_of(survey: dict[str, Any], log: str) -> Setup:
+    tables = merged(survey, log)
     sonar, limits = tables["sonar"], tables["limits"]
     numbers = ("pulse_length", "bandwidth", "beamwidth_along", "beamwidth_across", "frequency")
     stated = {name: si(sonar[name]) for name in (*numbers, "transducer_depth") if name in sonar}
