@@ -109,6 +109,11 @@ class SurveyFile:
     given: frozenset[str] = frozenset()
 
     @property
+    def says_depth_from(self) -> bool:
+        """Whether ``depth_from`` is stated, not merely the default."""
+        return "survey.depth_from" in self.given
+
+    @property
     def folder(self) -> Path:
         """Folder that relative paths in the file start from."""
         return self.path.parent if self.path else Path.cwd()
@@ -280,6 +285,7 @@ def _overlaid(base: SurveyFile, tables: Mapping[str, Any], prefix: str = "") -> 
     given = set(base.given)
     changes: dict[str, Any] = {}
     if "depth_from" in tables:
+        given.add("survey.depth_from")
         changes["depth_from"] = _choice(
             tables["depth_from"], _DEPTH_FROM, f"{path}: {prefix}depth_from"
         )

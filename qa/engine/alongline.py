@@ -1,0 +1,251 @@
+"""Quantities that need a ping's neighbours: intervals, gaps, stamps, speed and distance along a line.
+
+Every function takes the pings of one line and channel, in order, and gives one value for each.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from qa.physics import ground
+
+Floats = NDArray[np.float64]
+Times = NDArray[np.int64]
+
+TYPICAL_WINDOW = 51
+LEAST_FIX_TIME = 10.0
+ARRIVAL_WINDOW = 10
+_BLOCK = 20_000
+
+
+def ping_interval(time: Times) -> Floats:
+    """Time from each ping to the next; NaN for the last.
+
+    Parameters
+    ----------
+    time : ndarray of int64, shape (n,)
+        Transmission times. [ns]
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+        t[i+1] - t[i]. [s]
+
+    Examples
+    --------
+    >>> ping_interval(np.array([0, 200_000_000, 500_000_000])).tolist()
+    [0.2, 0.3, nan]
+    """
+    return ping_span(time, 1)
+
+
+def ping_span(time: Times, pings_in_water: float) -> Floats:
+    """Time from each ping to the one that is sent when its echo must be in: k pings later.
+
+    Parameters
+    ----------
+    time : ndarray of int64, shape (n,)
+        Transmission times. [ns]
+    pings_in_water : float
+        k, the pings that are in the water at once.
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+        t[i+k] - t[i]; NaN for the last k. [s]
+    """
+    k = int(pings_in_water)
+    found = np.full(len(time), np.nan)
+    if len(time) > k:
+        found[:-k] = (time[k:] - time[:-k]) / 1e9
+    return found
+
+
+def interval_per_ping(ping_span: Floats, pings_in_water: float) -> Floats:
+    """The interval that each ping has to itself: the span shared by the pings in the water. [s]"""
+    return ping_span / pings_in_water
+
+
+def typical_interval(interval_per_ping: Floats) -> Floats:
+    """What the interval usually is around a ping.
+
+    The larger of the median and of the mean of the lowest 90 % of the 51 intervals around it, the
+    window cut short at the line's ends. The mean keeps a line whose intervals alternate or bunch from
+    seeming full of gaps.
+
+    Parameters
+    ----------
+    interval_per_ping : ndarray of float64, shape (n,)
+        Intervals. [s]
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+        NaN where no interval is near. [s]
+    """
+    n, half = len(interval_per_ping), TYPICAL_WINDOW // 2
+    found = np.full(n, np.nan)
+    padded = np.concatenate([np.full(half, np.nan), interval_per_ping, np.full(half, np.nan)])
+    for start in range(0, n, _BLOCK):
+        stop = min(start + _BLOCK, n)
+        windows = np.lib.stride_tricks.sliding_window_view(
+            padded[start : stop + 2 * half], TYPICAL_WINDOW
+        )
+        ordered = np.sort(windows, axis=1)
+        count = np.sum(~np.isnan(ordered), axis=1)
+        some = np.maximum(count, 1)
+        rows = np.arange(stop - start)
+        median = 0.5 * (ordered[rows, (some - 1) // 2] + ordered[rows, some // 2])
+        kept = np.maximum(some * 9 // 10, 1)
+        sums = np.cumsum(np.where(np.isnan(ordered), 0.0, ordered), axis=1)
+        typical = np.maximum(median, sums[rows, kept - 1] / kept)
+        found[start:stop] = np.where(count > 0, typical, np.nan)
+    return found
+
+
+def least_mean_around(values: Floats, window: int = ARRIVAL_WINDOW) -> Floats:
+    """The least mean of all runs of ``window`` consecutive values that contain each one.
+
+    A series shorter than the window has one run: the whole of it. NaN where no run without NaN contains the value.
+    """
+    n = len(values)
+    found = np.full(n, np.nan)
+    usable = values[~np.isnan(values)]
+    if not len(usable):
+        return found
+    width = min(window, len(usable))
+    sums = np.lib.stride_tricks.sliding_window_view(values, min(width, n)).mean(axis=1)
+    padded = np.concatenate(
+        [
+            np.full(width - 1, np.inf),
+            np.where(np.isnan(sums), np.inf, sums),
+            np.full(width - 1, np.inf),
+        ]
+    )
+    least = np.lib.stride_tricks.sliding_window_view(padded, width).min(axis=1)[:n]
+    return np.where(np.isinf(least), np.nan, least)
+
+
+def stamped_on_arrival(ping_span: Floats, bottom_travel_time: Floats) -> Floats:
+    """1 where the clock cannot have stamped the transmission, else 0.
+
+    A span shorter than the bottom travel time, while no ten consecutive spans that contain it average
+    less, is a stamp of arrival at the logger; so is a span that is not longer than nothing, since no ping
+    follows another at once.
+
+    Parameters
+    ----------
+    ping_span, bottom_travel_time : ndarray of float64, shape (n,)
+        [s]
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+    """
+    bottom = np.broadcast_to(bottom_travel_time, ping_span.shape)
+    with np.errstate(invalid="ignore"):
+        short = ping_span < bottom * (1.0 - 1e-9)
+        bunched = ~(least_mean_around(ping_span) < bottom)
+        return ((short & bunched) | (ping_span <= 0.0)).astype(float)
+
+
+CLOCK_FAULTS = ("in order", "steps back", "repeats", "stamped on arrival")
+
+
+def clock_fault(time: Times, ping_span: Floats, bottom_travel_time: Any = np.nan) -> Floats:
+    """What is wrong with each ping's time, as a position in :data:`CLOCK_FAULTS`.
+
+    A step back or a repeat is the fault of the ping whose time is not later than the one before.
+
+    Parameters
+    ----------
+    time : ndarray of int64, shape (n,)
+        [ns]
+    ping_span : ndarray of float64, shape (n,)
+        [s]
+    bottom_travel_time : ndarray of float64, shape (n,), optional
+        Without it, stamps of arrival are not looked for. [s]
+    """
+    found = np.zeros(len(time))
+    bottom = np.broadcast_to(np.asarray(bottom_travel_time, dtype=float), ping_span.shape)
+    stamped = (stamped_on_arrival(ping_span, bottom) == 1.0) & (ping_span > 0.0)
+    found[stamped] = 3.0
+    step = np.diff(time)
+    found[1:][step == 0] = 2.0
+    found[1:][step < 0] = 1.0
+    return found
+
+
+def distinct_fixes(latitude: Floats, longitude: Floats) -> NDArray[np.int64]:
+    """Rows that hold a new position: not missing, not the one before again."""
+    known = np.flatnonzero(~(np.isnan(latitude) | np.isnan(longitude)))
+    if not len(known):
+        return known
+    moved = (np.diff(latitude[known]) != 0) | (np.diff(longitude[known]) != 0)
+    fixes: NDArray[np.int64] = known[np.concatenate([[True], moved])]
+    return fixes
+
+
+def speed_from_positions(time: Times, latitude: Floats, longitude: Floats) -> Floats:
+    """Speed over the ground from distinct fixes at least 10 s apart, straight between them.
+
+    Parameters
+    ----------
+    time : ndarray of int64, shape (n,)
+        [ns]
+    latitude, longitude : ndarray of float64, shape (n,)
+        [deg]
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+        NaN outside the first and the last fix used, and everywhere with fewer than two. [m/s]
+    """
+
+    def metres(first: NDArray[np.int64], second: NDArray[np.int64]) -> Floats:
+        return np.asarray(
+            ground.distance(latitude[first], longitude[first], latitude[second], longitude[second]),
+            dtype=float,
+        )
+
+    return _speed_between(time, distinct_fixes(latitude, longitude), metres)
+
+
+def speed_from_grid(time: Times, easting: Floats, northing: Floats) -> Floats:
+    """As :func:`speed_from_positions`, from grid coordinates in metres."""
+
+    def metres(first: NDArray[np.int64], second: NDArray[np.int64]) -> Floats:
+        return np.hypot(easting[second] - easting[first], northing[second] - northing[first])
+
+    return _speed_between(time, distinct_fixes(easting, northing), metres)
+
+
+def _speed_between(time: Times, fixes: NDArray[np.int64], metres: Any) -> Floats:
+    found = np.full(len(time), np.nan)
+    if len(fixes) < 2:
+        return found
+    seconds = (time[fixes] - time[0]) / 1e9
+    kept = [0]
+    while True:
+        following = int(np.searchsorted(seconds, seconds[kept[-1]] + LEAST_FIX_TIME, side="left"))
+        if following <= kept[-1] or following >= len(seconds):
+            break
+        kept.append(following)
+    if len(kept) < 2:
+        return found
+    used = fixes[kept]
+    between = metres(used[:-1], used[1:]) / np.diff(seconds[kept])
+    leg = np.searchsorted(used, np.arange(len(time)), side="right") - 1
+    inside = (leg >= 0) & (np.arange(len(time)) <= used[-1])
+    found[inside] = between[np.minimum(leg[inside], len(between) - 1)]
+    return found
+
+
+def distance_along(speed: Floats, ping_interval: Floats) -> Floats:
+    """Distance along the line since its first ping, over pings whose speed and interval are known. [m]"""
+    step = np.broadcast_to(speed, ping_interval.shape) * ping_interval
+    step = np.where(np.isnan(step) | (step < 0), 0.0, step)
+    return np.concatenate([[0.0], np.cumsum(step[:-1])]) if len(step) else step

@@ -1,0 +1,390 @@
+"""The three stages over one line: pings, beams reduced to their pings, pings again; then every rule's outcome."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from qa.engine.expressions import Judgement, judge
+from qa.engine.plans import Node, Plan, PlannedRule, closure
+from qa.engine.reducers import Groups, reduce_beams
+from qa.model.findings import EXEMPT, MET, MISSED, NOT_ASSESSED, BeamMisses, RuleSeries
+from qa.model.log import BeamBatch, ChannelSpan, Floats, LineLog, PingTable
+
+BATCH_ROWS = 100_000
+MOST_BEAM_MISSES = 4000
+MOST_EVIDENCE = 8
+
+
+@dataclass(slots=True)
+class WorstBeams:
+    """For each ping, what one beam rule came to: counts, and the beam that is nearest to failing."""
+
+    assessed: NDArray[np.int64]
+    missed: NDArray[np.int64]
+    margin: Floats
+    value: Floats
+    limit: Floats
+    inputs: dict[str, Floats]
+    misses: list[tuple[NDArray[np.int64], Floats]] = field(default_factory=list)
+    kept: int = 0
+    total: int = 0
+
+
+@dataclass(slots=True)
+class Computed:
+    """All that was computed for the pings of one group of channels that share a plan.
+
+    ``rows`` are the group's positions in the line's ping table; every array in ``values`` has their shape.
+    """
+
+    plan: Plan
+    rows: NDArray[np.int64]
+    channels: tuple[ChannelSpan, ...]
+    values: dict[str, Any]
+    worst_beams: dict[str, WorstBeams]
+    soundings: int = 0
+
+
+class LineRun:
+    """One group of channels on its way through the stages."""
+
+    def __init__(
+        self,
+        plan: Plan,
+        table: PingTable,
+        rows: NDArray[np.int64],
+        channels: tuple[ChannelSpan, ...],
+    ) -> None:
+        self.plan, self.table = plan, table
+        self.computed = Computed(plan, rows, channels, {}, {})
+        self.n = len(rows)
+        self.position = np.full(len(table), -1, dtype=np.int64)
+        self.position[rows] = np.arange(self.n)
+        self.whole = self.n == len(table)
+        self.beam_rules = [p for p in plan.rules if p.beam and p.applies and not p.missing]
+        values = self.computed.values
+        for key in plan.constants:
+            values[key] = self._constant(plan.nodes[key])
+        for key in plan.first_pings:
+            values[key] = self._ping(plan.nodes[key])
+        for key in plan.reductions:
+            reducer = plan.nodes[key].reduction
+            assert reducer is not None
+            values[key] = np.full(self.n, 0.0 if reducer.reducer == "count" else np.nan)
+        for planned in self.beam_rules:
+            self.computed.worst_beams[planned.rule.id] = self._no_beams(planned)
+
+    def _no_beams(self, planned: PlannedRule) -> WorstBeams:
+        nodes = self.plan.nodes
+        wanted = [k for k in closure(planned.reads, nodes) if nodes[k].grain == "beam"][
+            :MOST_EVIDENCE
+        ]
+        if "angle_from_vertical" in nodes and "angle_from_vertical" not in wanted:
+            wanted.append("angle_from_vertical")
+
+        def blank() -> Floats:
+            return np.full(self.n, np.nan)
+
+        count = np.zeros(self.n, dtype=np.int64)
+        return WorstBeams(
+            count, count.copy(), blank(), blank(), blank(), {k: blank() for k in wanted}
+        )
+
+    def _constant(self, node: Node) -> Any:
+        if node.value is not None:
+            return node.value
+        values = self.computed.values
+        if node.limit is not None and node.limit.expression is not None:
+            return node.limit.expression.run(values)
+        return _by_recipe(node, values)
+
+    def _ping(self, node: Node) -> Any:
+        values = self.computed.values
+        if node.way == "logged":
+            column = self.table.time if node.key == "time" else self._column(node.key)
+            return column if self.whole else column[self.computed.rows]
+        if node.way == "alias":
+            return values[node.inputs[0]]
+        with np.errstate(all="ignore"):
+            if node.limit is not None and node.limit.expression is not None:
+                found = node.limit.expression.run(values)
+            elif node.recipe is not None and node.recipe.whole_line:
+                return self._by_channel(node, values)
+            else:
+                found = _by_recipe(node, values)
+        return np.broadcast_to(np.asarray(found, dtype=float), (self.n,))
+
+    def _column(self, key: str) -> Any:
+        return self.table.ping.astype(float) if key == "ping" else self.table.columns[key]
+
+    def _by_channel(self, node: Node, values: Mapping[str, Any]) -> Floats:
+        found = np.full(self.n, np.nan)
+        for channel in self.computed.channels:
+            rows = channel.rows
+            here = {k: v[rows] if np.ndim(v) else v for k, v in values.items() if k in node.inputs}
+            found[rows] = _by_recipe(node, here)
+        return found
+
+    def take(self, batch: BeamBatch) -> None:
+        """Stage 2: one batch of beams, whole pings of any channel."""
+        pings = self.position[batch.pings]
+        mine = pings >= 0
+        if mine.all():
+            self._beams(pings, batch.counts, batch.columns)
+        elif mine.any():
+            rows = np.repeat(mine, batch.counts)
+            columns = {k: v[rows] for k, v in batch.columns.items()}
+            self._beams(pings[mine], batch.counts[mine], columns)
+
+    def make_beams(self, rows: int = BATCH_ROWS) -> None:
+        """Stage 2 of a side-scan: two beams a ping, at the near and at the farthest range."""
+        near, far = (self.computed.values[k] for k in self.plan.nodes["slant_range"].inputs)
+        near, far = np.broadcast_to(near, (self.n,)), np.broadcast_to(far, (self.n,))
+        for start in range(0, self.n, rows // 2):
+            pings = np.arange(start, min(start + rows // 2, self.n))
+            made = np.column_stack([near[pings], far[pings]]).ravel()
+            self._beams(pings, np.full(len(pings), 2), {"slant_range": made})
+
+    def _beams(
+        self, pings: NDArray[np.int64], counts: NDArray[np.int64], columns: Mapping[str, Any]
+    ) -> None:
+        groups = Groups.of(counts)
+        n_rows = int(counts.sum())
+        self.computed.soundings += n_rows
+        values = _BeamValues(self.computed.values, pings, groups)
+        nodes = self.plan.nodes
+        with np.errstate(all="ignore"):
+            for key in self.plan.beams:
+                node = nodes[key]
+                if node.way in ("logged", "made"):
+                    values[key] = np.asarray(columns[key], dtype=float)
+                elif node.way == "alias":
+                    values[key] = values[node.inputs[0]]
+                elif node.limit is not None and node.limit.expression is not None:
+                    values[key] = node.limit.expression.run(values)
+                else:
+                    values[key] = _by_recipe(node, values)
+            accepted = self._accepted(values, n_rows)
+            for key in self.plan.reductions:
+                self.computed.values[key][pings] = self._reduced(
+                    nodes[key], values, groups, n_rows, accepted
+                )
+            for planned in self.beam_rules:
+                self._judge_beams(planned, values, groups, n_rows, pings, accepted)
+
+    def _accepted(self, values: Mapping[str, Any], rows: int) -> NDArray[np.bool_] | None:
+        if "accepted" not in self.plan.nodes or self.plan.available.makes_beams:
+            return None
+        accepted = values["accepted"]
+        if np.ndim(accepted) == 0:
+            return None
+        return np.asarray(accepted != 0.0)
+
+    def _reduced(
+        self,
+        node: Node,
+        values: Mapping[str, Any],
+        groups: Groups,
+        rows: int,
+        accepted: NDArray[np.bool_] | None,
+    ) -> Floats:
+        reduction = node.reduction
+        assert reduction is not None
+        inner = reduction.inner.run(values)
+        nearness: Any = None
+        if reduction.reducer in ("nearest_vertical", "nearest_angle"):
+            if self.plan.available.makes_beams:
+                nearness = np.tile([0.0, 1.0], rows // 2)
+            else:
+                angle = 0.0 if reduction.angle is None else reduction.angle.run(values)
+                nearness = np.abs(np.abs(values["angle_from_vertical"]) - angle)
+        counted = None if "accepted" in reduction.inner.names else accepted
+        return reduce_beams(reduction.reducer, inner, groups, rows, counted, nearness)
+
+    def _judge_beams(
+        self,
+        planned: PlannedRule,
+        values: _BeamValues,
+        groups: Groups,
+        rows: int,
+        pings: NDArray[np.int64],
+        accepted: NDArray[np.bool_] | None,
+    ) -> None:
+        assert planned.rule.requirement is not None
+        judged = judge(planned.rule.requirement, values)
+        known = np.broadcast_to(judged.known, (rows,))
+        if accepted is not None:
+            known = known & accepted
+        missed = known & ~np.broadcast_to(judged.met, (rows,))
+        kept = self.computed.worst_beams[planned.rule.id]
+        kept.assessed[pings] = groups.reduced(np.add, known.astype(np.int64), 0)
+        kept.missed[pings] = groups.reduced(np.add, missed.astype(np.int64), 0)
+        margin = np.where(known, judged.margin, np.inf)
+        least = groups.reduced(np.minimum, margin, np.inf)
+        worst = groups.first_where(known & (margin == np.repeat(least, groups.counts)))
+        found = worst >= 0
+        rows_of, into = worst[found], pings[found]
+        kept.margin[into] = margin[rows_of]
+        kept.value[into] = np.broadcast_to(judged.value, (rows,))[rows_of]
+        kept.limit[into] = np.broadcast_to(judged.limit, (rows,))[rows_of]
+        for key, into_values in kept.inputs.items():
+            into_values[into] = np.broadcast_to(values[key], (rows,))[rows_of]
+        self._keep_misses(kept, missed, values, groups, pings)
+
+    def _keep_misses(
+        self,
+        kept: WorstBeams,
+        missed: NDArray[np.bool_],
+        values: _BeamValues,
+        groups: Groups,
+        pings: NDArray[np.int64],
+    ) -> None:
+        rows = np.flatnonzero(missed)
+        kept.total += len(rows)
+        if not len(rows) or "angle_from_vertical" not in self.plan.nodes:
+            return
+        if self.plan.nodes["angle_from_vertical"].grain != "beam":
+            return
+        kept.kept += len(rows)
+        owner = np.repeat(pings, groups.counts)[rows]
+        kept.misses.append((owner, np.asarray(values["angle_from_vertical"], dtype=float)[rows]))
+        if kept.kept > 4 * MOST_BEAM_MISSES:
+            _thin(kept)
+
+    def finish(self) -> Computed:
+        """Stage 3: what needs a whole line of pings, reduced values included."""
+        values = self.computed.values
+        for key in self.plan.last_pings:
+            values[key] = self._ping(self.plan.nodes[key])
+        return self.computed
+
+
+class _BeamValues(dict[str, Any]):
+    """Values at the beams of one batch; those of pings are spread over their beams when first asked for."""
+
+    def __init__(
+        self, of_pings: Mapping[str, Any], pings: NDArray[np.int64], groups: Groups
+    ) -> None:
+        super().__init__()
+        self.of_pings, self.pings, self.groups = of_pings, pings, groups
+
+    def __missing__(self, key: str) -> Any:
+        value = self.of_pings[key]
+        if np.ndim(value):
+            value = self.groups.spread(value[self.pings])
+        self[key] = value
+        return value
+
+
+def _by_recipe(node: Node, values: Mapping[str, Any]) -> Any:
+    recipe = node.recipe
+    assert recipe is not None
+    given = zip(recipe.parameters, recipe.needs, strict=True)
+    return recipe.function(**{p: values[need] for p, need in given if need not in node.absent})
+
+
+def _thin(kept: WorstBeams) -> None:
+    owner = np.concatenate([o for o, _ in kept.misses])
+    angle = np.concatenate([a for _, a in kept.misses])
+    step = -(-len(owner) // MOST_BEAM_MISSES)
+    kept.misses = [(owner[::step], angle[::step])]
+    kept.kept = len(kept.misses[0][0])
+
+
+def beam_misses(computed: Computed) -> Iterator[BeamMisses]:
+    """The beams that missed a rule, thinned, at their pings' positions in the line's table."""
+    for rule, kept in computed.worst_beams.items():
+        if kept.misses:
+            if kept.kept > MOST_BEAM_MISSES:
+                _thin(kept)
+            owner = np.concatenate([o for o, _ in kept.misses])
+            angle = np.concatenate([a for _, a in kept.misses])
+            yield BeamMisses(rule, computed.rows[owner], angle, kept.total)
+
+
+def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> list[Computed]:
+    """Take a line through the stages.
+
+    Parameters
+    ----------
+    log : LineLog
+    runs : list of LineRun
+        One for each group of channels that share a plan.
+    rows : int
+        Beams a batch holds, about.
+    """
+    columns = frozenset().union(*(r.plan.beam_columns for r in runs))
+    reading = [r for r in runs if not r.plan.available.makes_beams]
+    for run in runs:
+        if run.plan.available.makes_beams and "slant_range" in run.plan.beams:
+            run.make_beams(rows)
+    if log.beam_columns and (reading or log.grain == "beam"):
+        for batch in log.beam_batches(sorted(columns), rows):
+            for run in reading:
+                run.take(batch)
+    return [run.finish() for run in runs]
+
+
+def outcomes(computed: Computed, planned: PlannedRule) -> RuleSeries | None:
+    """What one rule comes to for each ping of a group; None where it was not planned."""
+    rule, plan = planned.rule, computed.plan
+    if rule.requirement is None or planned.missing or not planned.applies:
+        return None
+    n = len(computed.rows)
+    if planned.beam:
+        judged, met = _beam_outcome(computed, planned)
+    else:
+        with np.errstate(all="ignore"):
+            judged = judge(rule.requirement, computed.values)
+        met = np.broadcast_to(judged.met, (n,))
+    status = np.where(
+        np.broadcast_to(judged.known, (n,)), np.where(met, MET, MISSED), NOT_ASSESSED
+    ).astype(np.int8)
+    if planned.by_ping and rule.when is not None:
+        condition = np.broadcast_to(np.asarray(rule.when.run(computed.values), dtype=float), (n,))
+        status[np.isnan(condition)] = NOT_ASSESSED
+        status[condition == 0.0] = EXEMPT
+    if planned.timed:
+        _leave_out_stamps(computed, planned, status)
+    silent = (status != MET) & (status != MISSED)
+
+    def shown(values: Any) -> Floats:
+        return np.where(silent, np.nan, np.broadcast_to(np.asarray(values, dtype=float), (n,)))
+
+    unit = _unit_of(planned, plan)
+    return RuleSeries(status, shown(judged.value), shown(judged.limit), shown(judged.margin), unit)
+
+
+def _unit_of(planned: PlannedRule, plan: Plan) -> str:
+    requirement = planned.rule.requirement
+    if requirement is None or not requirement.comparisons:
+        return "1"
+    return str(requirement.comparisons[0].left.unit)
+
+
+def _beam_outcome(computed: Computed, planned: PlannedRule) -> tuple[Judgement, NDArray[np.bool_]]:
+    kept = computed.worst_beams[planned.rule.id]
+    known = kept.assessed > 0
+    with np.errstate(invalid="ignore", divide="ignore"):
+        share = kept.missed / kept.assessed
+    met = ~(share > planned.rule.allow_beams)
+    # A ping that its allowance saves is on the right side of the limit, however bad its worst beam.
+    margin = np.where(met & (kept.margin < 0.0), 0.0, kept.margin)
+    return Judgement(known, met, kept.value, kept.limit, margin), met
+
+
+def _leave_out_stamps(computed: Computed, planned: PlannedRule, status: NDArray[np.int8]) -> None:
+    """Pings that cannot have an interval are exempt; those stamped on arrival are not assessed."""
+    stamped = computed.values.get("stamped_on_arrival")
+    if stamped is not None:
+        status[np.asarray(stamped) == 1.0] = NOT_ASSESSED
+    ahead = 1
+    if "ping_span" in planned.timed:
+        ahead = int(computed.values["pings_in_water"])
+    for channel in computed.channels:
+        status[max(channel.start, channel.stop - ahead) : channel.stop] = EXEMPT
