@@ -64,7 +64,8 @@ class Planned:
     note: str = "clean"
 
 
-MULTIBEAM = Sonar(beams=160)
+# as many beams as leave no ground between them
+MULTIBEAM = Sonar(beams=256)
 MB_LIMITS = Limits()
 SIDE_SCAN = Sonar(
     kind="side-scan",
