@@ -491,7 +491,9 @@ def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
         # A beam's own value has no place in a ping's text.
         if node.grain != "beam":
             roots.append(node.key)
-    timed = frozenset(k for k in closure(rule.requirement.names, resolver.nodes) if k in TIMED)
+    rests_on = closure(rule.requirement.names, resolver.nodes)
+    # The rule on the clock itself is assessed where the others cannot be.
+    timed = frozenset(rests_on) & TIMED if "clock_fault" not in rests_on else frozenset()
     beam = grain_of(*(n.grain for n in needed)) == "beam"
     return PlannedRule(rule, beam, True, none, timed, tuple(n.key for n in needed), by_ping)
 

@@ -387,4 +387,5 @@ def _leave_out_stamps(computed: Computed, planned: PlannedRule, status: NDArray[
     if "ping_span" in planned.timed:
         ahead = int(computed.values["pings_in_water"])
     for channel in computed.channels:
-        status[max(channel.start, channel.stop - ahead) : channel.stop] = EXEMPT
+        tail = status[max(channel.start, channel.stop - ahead) : channel.stop]
+        tail[tail == NOT_ASSESSED] = EXEMPT

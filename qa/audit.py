@@ -1,0 +1,630 @@
+"""The job: logs in, findings and a report out.
+
+Plan which rows of which files make which line; take each line through the engine, on its own; put the lines
+together; write everything beside the target and move it into place.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+import shutil
+import tempfile
+import traceback
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from concurrent.futures import Executor, Future, ProcessPoolExecutor, as_completed
+from concurrent.futures.process import BrokenProcessPool
+from dataclasses import dataclass, replace
+from functools import lru_cache
+from pathlib import Path
+from typing import Any, Literal
+
+import qa
+from qa.engine.evaluate import evaluate_line
+from qa.engine.sheets import RuleSheet, load_sheet
+from qa.ingest import DayChoice, LineTask, open_line, plan_logs
+from qa.model.errors import InputError, OutputError, PingworthyError
+from qa.model.findings import (
+    Assumption,
+    Findings,
+    InputFile,
+    LineFinding,
+    LineRule,
+    RuleFinding,
+    Section,
+    Verdict,
+)
+from qa.model.log import FileAccount, RejectedRow
+from qa.model.survey_file import SurveyFile, load_survey_file
+from qa.report import LineArtifacts, write_line, write_outputs
+
+Pages = Literal["auto", "one", "many"]
+Progress = Callable[[int, int, str], None]
+ExecutorFactory = Callable[[], Executor]
+
+OUTPUTS = (
+    *("report.html", "findings.json", "sections.csv", "rerun.geojson", "pings.parquet"),
+    *("rejected.csv", "lines", "data"),
+)
+BIG_ENOUGH_TO_SHARE = 30_000_000
+"""Bytes of logs from which on starting other processes pays."""
+
+
+@dataclass(frozen=True, slots=True)
+class SheetChoice:
+    """Which sheet, from where, with which limits laid over it: small, so that it travels to a worker."""
+
+    name: str
+    base: str
+    overrides: tuple[tuple[str, Any], ...]
+
+    def load(self, survey: SurveyFile) -> RuleSheet:
+        """The sheet with the survey's limits."""
+        return _loaded_sheet(
+            self, json.dumps(survey.limits, sort_keys=True, default=str), str(survey.path or "")
+        )(survey)
+
+
+@lru_cache(maxsize=64)
+def _loaded_sheet(choice: SheetChoice, limits: str, path: str) -> Callable[[SurveyFile], RuleSheet]:
+    kept: list[RuleSheet] = []
+
+    def load(survey: SurveyFile) -> RuleSheet:
+        if not kept:
+            kept.append(load_sheet(choice.name, survey, dict(choice.overrides), Path(choice.base)))
+        return kept[0]
+
+    return load
+
+
+@dataclass(frozen=True, slots=True)
+class LineJob:
+    """All that a worker needs for one line."""
+
+    number: int
+    task: LineTask
+    survey: SurveyFile
+    sheet: SheetChoice
+    folder: str | None
+
+
+@dataclass(frozen=True, slots=True)
+class LineOutcome:
+    """What a worker hands back: small, whatever the line's size."""
+
+    number: int
+    finding: LineFinding
+    sections: tuple[Section, ...]
+    assumptions: tuple[Assumption, ...]
+    limit_ranges: Mapping[str, tuple[float, float]]
+    accounts: tuple[FileAccount, ...]
+    artifacts: LineArtifacts | None
+    input_error: str | None = None
+
+
+def audit(
+    logs: Sequence[str | Path] | str | Path,
+    survey: str | Path | SurveyFile | None = None,
+    sheet: str | Path | None = None,
+    out: str | Path | None = None,
+    *,
+    limits: Mapping[str, Any] | None = None,
+    day: DayChoice | None = None,
+    workers: int | None = None,
+    require_assessed: bool = False,
+    pages: Pages = "auto",
+    progress: Progress | None = None,
+    executor: ExecutorFactory | None = None,
+) -> Findings:
+    """Audit the logs of a survey.
+
+    Parameters
+    ----------
+    logs : path or sequence of paths
+        Files, folders or globs.
+    survey : path or SurveyFile, optional
+        What is true of the survey.
+    sheet : str or path, optional
+        Rule sheet; beats the survey file's. Default "physics".
+    out : path, optional
+        Folder for the report and the files beside it; nothing is written without it.
+    limits : mapping, optional
+        Limits that override the sheet's and the survey file's, such as ``{"target_size": "0.5 m"}``.
+    day : DayChoice, optional
+        Only pings of this day.
+    workers : int, optional
+        Processes at work at once; chosen by the size of the logs if left out.
+    require_assessed : bool
+        Whether a rule that was not assessed counts towards the exit status.
+    pages : "auto", "one" or "many"
+        Whether lines stand in the report or on pages of their own.
+    progress : callable, optional
+        Called with lines done, lines in all and the name of the line just done.
+    executor : callable, optional
+        Makes any ``concurrent.futures`` executor to run lines on.
+
+    Returns
+    -------
+    Findings
+
+    Raises
+    ------
+    PingworthyError
+        If a sheet or survey file, or every log, cannot be used, or the results cannot be written.
+    """
+    paths = [logs] if isinstance(logs, str | Path) else list(logs)
+    facts = (
+        survey
+        if isinstance(survey, SurveyFile)
+        else load_survey_file(survey)
+        if survey
+        else SurveyFile()
+    )
+    choice = _sheet_choice(sheet, facts, limits or {})
+    rules = choice.load(facts)
+    _check_parts(choice, facts)
+    target = None if out is None else _checked_target(Path(out))
+    plan = plan_logs(paths, facts, day)
+    folder = None if target is None else _folder_beside(target)
+    try:
+        jobs = [
+            LineJob(number, task, facts, choice, None if folder is None else str(folder))
+            for number, task in enumerate(plan.lines, start=1)
+        ]
+        outcomes = _run(jobs, workers, progress, executor)
+        findings = _together(facts, choice, rules, plan.inputs, outcomes, day, require_assessed)
+        if folder is not None and target is not None:
+            artifacts = [o.artifacts for o in outcomes if o.artifacts is not None]
+            write_outputs(findings, artifacts, _rejected(outcomes), folder, pages)
+            _move_into_place(folder, target)
+    finally:
+        if folder is not None:
+            shutil.rmtree(folder, ignore_errors=True)
+    return findings
+
+
+def _sheet_choice(
+    sheet: str | Path | None, survey: SurveyFile, limits: Mapping[str, Any]
+) -> SheetChoice:
+    if sheet:
+        name, base = str(sheet), Path.cwd()
+    else:
+        name, base = survey.sheet or "physics", survey.folder
+    return SheetChoice(name, str(base), tuple(limits.items()))
+
+
+def _check_parts(choice: SheetChoice, survey: SurveyFile) -> None:
+    """Limits of every part are checked before any log is read."""
+    for patterns, _ in survey.parts:
+        choice.load(survey.for_log(survey.folder / patterns[0]))
+
+
+# Lines as tasks
+
+
+def run_line(job: LineJob) -> LineOutcome:
+    """One line, from its files to its findings and its part of the report."""
+    try:
+        log = open_line(job.task, job.survey)
+        survey = log.survey
+        result = evaluate_line(log, survey, job.sheet.load(survey), job.task.files)
+    except PingworthyError as error:
+        return _failed(job, str(error), str(error))
+    except Exception as error:
+        # One line's failure is reported with its line; the others finish.
+        place = traceback.extract_tb(error.__traceback__)[-1]
+        text = f"{type(error).__name__}: {error} ({Path(place.filename).name}:{place.lineno})"
+        return _failed(job, text, None)
+    numbered = tuple(
+        replace(s, id=f"{job.number}.{i}") for i, s in enumerate(result.sections, start=1)
+    )
+    result.sections = numbered
+    accounts = log.accounts()
+    notes = tuple(dict.fromkeys(n for a in accounts for n in a.notes))
+    result.finding = replace(result.finding, notes=notes)
+    artifacts = write_line(result, Path(job.folder), job.number) if job.folder is not None else None
+    return LineOutcome(
+        job.number,
+        result.finding,
+        numbered,
+        result.assumptions,
+        result.limit_ranges,
+        accounts,
+        artifacts,
+    )
+
+
+def _failed(job: LineJob, error: str, input_error: str | None) -> LineOutcome:
+    finding = LineFinding(
+        line=job.task.name,
+        kind="",
+        channels=(),
+        files=job.task.files,
+        pings=0,
+        soundings=0,
+        start=None,
+        end=None,
+        length=None,
+        duration=None,
+        verdict="not assessed",
+        error=error,
+    )
+    return LineOutcome(job.number, finding, (), (), {}, (), None, input_error)
+
+
+def _run(
+    jobs: Sequence[LineJob],
+    workers: int | None,
+    progress: Progress | None,
+    executor: ExecutorFactory | None,
+) -> list[LineOutcome]:
+    """Every job's outcome, in the order of the jobs."""
+    if executor is None:
+        count = workers if workers is not None else _workers_for(jobs)
+        count = min(count, len(jobs))
+        if count <= 1:
+            return list(_serially(jobs, progress))
+        executor = _ProcessPool(count)
+    return _on_executor(jobs, executor, progress)
+
+
+def _workers_for(jobs: Sequence[LineJob]) -> int:
+    total = sum(job.task.bytes for job in jobs)
+    return (os.cpu_count() or 1) if total > BIG_ENOUGH_TO_SHARE else 1
+
+
+def _serially(jobs: Sequence[LineJob], progress: Progress | None) -> Iterator[LineOutcome]:
+    for done, job in enumerate(jobs, start=1):
+        outcome = run_line(job)
+        if progress is not None:
+            progress(done, len(jobs), job.task.name)
+        yield outcome
+
+
+@dataclass(frozen=True, slots=True)
+class _ProcessPool:
+    """Makes pools of spawned processes, the same on every system."""
+
+    count: int
+
+    def __call__(self) -> Executor:
+        import multiprocessing
+
+        return ProcessPoolExecutor(self.count, mp_context=multiprocessing.get_context("spawn"))
+
+
+def _on_executor(
+    jobs: Sequence[LineJob], factory: ExecutorFactory, progress: Progress | None
+) -> list[LineOutcome]:
+    """Run on a pool; where it breaks, a new one takes the unfinished lines one by one."""
+    outcomes: dict[int, LineOutcome] = {}
+
+    def keep(outcome: LineOutcome, name: str) -> None:
+        outcomes[outcome.number] = outcome
+        if progress is not None:
+            progress(len(outcomes), len(jobs), name)
+
+    pending = list(jobs)
+    broken = False
+    pool = factory()
+    try:
+        futures: dict[Future[LineOutcome], LineJob] = {
+            pool.submit(run_line, job): job for job in pending
+        }
+        for future in as_completed(futures):
+            try:
+                keep(future.result(), futures[future].task.name)
+            except BrokenProcessPool:
+                broken = True
+                break
+    finally:
+        pool.shutdown(wait=not broken, cancel_futures=True)
+    for job in [job for job in jobs if job.number not in outcomes]:
+        pool = factory()
+        try:
+            keep(pool.submit(run_line, job).result(), job.task.name)
+        except BrokenProcessPool:
+            keep(
+                _failed(job, "the process that computed this line was ended by the system", None),
+                job.task.name,
+            )
+        finally:
+            pool.shutdown(wait=False, cancel_futures=True)
+    return [outcomes[job.number] for job in jobs]
+
+
+# Lines put together
+
+
+def _together(
+    survey: SurveyFile,
+    choice: SheetChoice,
+    sheet: RuleSheet,
+    failed: Sequence[InputFile],
+    outcomes: Sequence[LineOutcome],
+    day: DayChoice | None,
+    require_assessed: bool,
+) -> Findings:
+    inputs = _inputs(failed, outcomes)
+    lines = tuple(o.finding for o in outcomes)
+    if not any(line.pings for line in lines):
+        errors = [i.error for i in inputs if i.error]
+        raise InputError(
+            errors[0] if len(errors) == 1 else f"None of the {len(inputs)} files could be used.",
+            found="; ".join(e for e in errors if e)[:2000] if len(errors) > 1 else "",
+        )
+    rules = tuple(_rule(sheet, rule, outcomes) for rule in sheet.rules)
+    verdict: Verdict = "not assessed"
+    if any(line.verdict == "out of spec" for line in lines):
+        verdict = "out of spec"
+    elif any(line.verdict == "in spec" for line in lines):
+        verdict = "in spec"
+    findings = Findings(
+        tool={"name": "pingworthy", "version": qa.__version__},
+        survey={
+            "name": survey.name,
+            "file": None if survey.path is None else survey.path.name,
+            "sha256": survey.sha256 or None,
+            "depth_from": survey.depth_from,
+            "vessel_time_zone": survey.vessel_time_zone,
+            "day": None if day is None else str(day.date),
+            "stated": dict(sorted(survey.stated.items())),
+            "parts": [
+                {"logs": list(patterns), "states": _flat(tables)}
+                for patterns, tables in survey.parts
+            ],
+        },
+        sheet={
+            "name": sheet.name,
+            "title": sheet.title,
+            "about": sheet.about.strip(),
+            "sha256": sheet.sha256,
+            "extends": list(sheet.extends),
+        },
+        verdict=verdict,
+        inputs=inputs,
+        assumptions=_assumptions(outcomes),
+        limits=tuple(
+            {
+                "name": limit.name,
+                "text": limit.text or None,
+                "unit": str(limit.unit),
+                "about": limit.about,
+                "source": limit.source,
+                "origin": limit.origin,
+            }
+            for limit in sheet.limits.values()
+        ),
+        rules=rules,
+        lines=lines,
+        sections=tuple(s for o in outcomes for s in o.sections),
+    )
+    return replace(findings, exit_status=_exit_status(findings, outcomes, require_assessed))
+
+
+def _flat(tables: Mapping[str, Any]) -> dict[str, Any]:
+    flat: dict[str, Any] = {}
+    for name, table in tables.items():
+        if isinstance(table, Mapping):
+            flat.update(
+                {
+                    f"{name}.{key}": value
+                    for key, value in table.items()
+                    if not isinstance(value, Mapping)
+                }
+            )
+        else:
+            flat[name] = table
+    return flat
+
+
+def _exit_status(
+    findings: Findings, outcomes: Sequence[LineOutcome], require_assessed: bool
+) -> int:
+    if any(o.finding.error and not o.input_error for o in outcomes):
+        return 3
+    if any(i.error for i in findings.inputs):
+        return 2
+    if findings.verdict == "out of spec":
+        return 1
+    if require_assessed:
+        for line in findings.lines:
+            if any(r.verdict == "not assessed" and r.severity == "out of spec" for r in line.rules):
+                return 1
+    return 0
+
+
+def _inputs(failed: Sequence[InputFile], outcomes: Sequence[LineOutcome]) -> tuple[InputFile, ...]:
+    found: dict[str, InputFile] = {}
+    for outcome in outcomes:
+        for account in outcome.accounts:
+            before = found.get(account.path) or InputFile(account.path)
+            found[account.path] = replace(
+                before,
+                rows_read=before.rows_read + account.rows_read,
+                rows_used=before.rows_used + account.rows_used,
+                rows_rejected=before.rows_rejected + account.rows_rejected,
+                rows_out_of_scope=before.rows_out_of_scope + account.rows_out_of_scope,
+                reasons=_added(before.reasons, account.reasons),
+                missing=_added(before.missing, account.missing),
+                notes=tuple(dict.fromkeys((*before.notes, *account.notes))),
+            )
+        if outcome.input_error:
+            for path in outcome.finding.files:
+                found[path] = replace(found.get(path) or InputFile(path), error=outcome.input_error)
+    for item in failed:
+        found[item.path] = item
+    return tuple(_hashed(item) for _, item in sorted(found.items()))
+
+
+def _added(first: Mapping[str, int], second: Mapping[str, int]) -> dict[str, int]:
+    return {k: first.get(k, 0) + second.get(k, 0) for k in sorted({*first, *second})}
+
+
+def _hashed(item: InputFile) -> InputFile:
+    path = Path(item.path)
+    if item.sha256 is not None or not path.is_file():
+        return item
+    try:
+        with path.open("rb") as stream:
+            return replace(
+                item,
+                sha256=hashlib.file_digest(stream, "sha256").hexdigest(),
+                bytes=path.stat().st_size,
+            )
+    except OSError:
+        return item
+
+
+def _rejected(outcomes: Sequence[LineOutcome]) -> Iterable[RejectedRow]:
+    for outcome in outcomes:
+        for account in outcome.accounts:
+            yield from account.rejected_rows
+
+
+def _assumptions(outcomes: Sequence[LineOutcome]) -> tuple[Assumption, ...]:
+    merged: dict[tuple[str, str, str], list[str]] = {}
+    for outcome in outcomes:
+        for found in outcome.assumptions:
+            merged.setdefault((found.name, found.value, found.reason), []).extend(found.lines)
+    return tuple(
+        Assumption(name, value, reason, tuple(lines))
+        for (name, value, reason), lines in sorted(merged.items())
+    )
+
+
+def _rule(sheet: RuleSheet, name: str, outcomes: Sequence[LineOutcome]) -> RuleFinding:
+    """One rule over all lines; its worst value is that of the line whose margin is least."""
+    rule = sheet.rules[name]
+    found: list[LineRule] = [r for o in outcomes for r in o.finding.rules if r.id == name]
+    assessed = [r for r in found if r.pings_assessed]
+    out = [r for r in found if r.verdict == "out of spec"]
+    verdict: Verdict = "out of spec" if out else "in spec" if assessed else "not assessed"
+    with_margin = [r for r in assessed if r.margin is not None]
+    missed = [r for r in with_margin if r.pings_missed]
+    worst = min(missed or with_margin, key=lambda r: r.margin or 0.0, default=None)
+    ranges = [o.limit_ranges[name] for o in outcomes if name in o.limit_ranges]
+    not_assessed = [r for r in found if not r.pings_assessed]
+    unit = next((r.unit for r in found if r.unit), "")
+    if not unit and rule.requirement is not None and rule.requirement.comparisons:
+        unit = str(rule.requirement.comparisons[0].left.unit)
+    return RuleFinding(
+        id=name,
+        title=rule.title,
+        verdict=verdict,
+        reason=_rule_reason(rule, found, out, not_assessed, len(outcomes)),
+        severity=rule.severity,
+        require=rule.text,
+        allow=rule.allow,
+        limit=worst.limit if worst else None,
+        limits=(min(a for a, _ in ranges), max(b for _, b in ranges)) if ranges else None,
+        worst=worst.worst if worst else None,
+        unit=unit,
+        margin=worst.margin if worst else None,
+        pings_assessed=sum(r.pings_assessed for r in found),
+        pings_missed=sum(r.pings_missed for r in found),
+        pings_not_assessed=sum(r.pings_not_assessed for r in found),
+        pings_exempt=sum(r.pings_exempt for r in found),
+        pings_stray=sum(r.pings_stray for r in found),
+        lines_in_spec=sum(r.verdict == "in spec" for r in found),
+        lines_out_of_spec=len(out),
+        lines_not_assessed=len(not_assessed),
+        lines_exempt=sum(1 for o in outcomes if not o.finding.error) - len(found),
+        metres_assessed=_sum(r.metres_assessed for r in found),
+        metres_missed=_sum(r.metres_missed for r in found),
+        source=rule.source,
+        why=rule.why,
+        sheet=" → ".join((rule.sheet, *rule.changed_by)),
+        clause=rule.clause,
+    )
+
+
+def _rule_reason(
+    rule: Any,
+    found: Sequence[LineRule],
+    out: Sequence[LineRule],
+    unassessed: Sequence[LineRule],
+    lines: int,
+) -> str:
+    if not found:
+        return "it applies to none of these lines"
+    reasons = list(dict.fromkeys(r.reason for r in unassessed if r.reason))
+    parts = []
+    if out:
+        parts.append(
+            f"out of spec on {len(out)} of {len(found)} line{'s' if len(found) > 1 else ''}"
+        )
+    if unassessed:
+        where = (
+            ""
+            if len(unassessed) == len(found)
+            else f"not assessed on {len(unassessed)} of {len(found)} lines: "
+        )
+        parts.append(where + "; ".join(reasons[:3]) + ("; and others" if len(reasons) > 3 else ""))
+    return "; ".join(parts)
+
+
+def _sum(values: Iterable[float | None]) -> float | None:
+    known = [v for v in values if v is not None]
+    return sum(known) if known else None
+
+
+# Where the results go
+
+
+def _checked_target(target: Path) -> Path:
+    """The target, if it is free or holds an earlier audit; else one clear error."""
+    if target.exists() and not target.is_dir():
+        raise OutputError(
+            "The output is not a folder.", where=str(target), advice="Name a folder with --out."
+        )
+    if target.is_dir() and any(target.iterdir()) and not is_earlier_audit(target):
+        raise OutputError(
+            "The folder holds something else.",
+            where=str(target),
+            expected="an empty or new folder, or one with an earlier audit",
+            advice="Name another folder with --out.",
+        )
+    return target
+
+
+def is_earlier_audit(folder: Path) -> bool:
+    """Whether a folder holds what this program wrote."""
+    try:
+        with (folder / "findings.json").open(encoding="utf-8") as stream:
+            return '"pingworthy"' in stream.read(400)
+    except OSError:
+        return False
+
+
+def _folder_beside(target: Path) -> Path:
+    try:
+        target.parent.mkdir(parents=True, exist_ok=True)
+        return Path(tempfile.mkdtemp(prefix=".pingworthy-", dir=target.parent))
+    except OSError as error:
+        raise OutputError(
+            "The results cannot be written there.",
+            where=str(target),
+            found=error.strerror or str(error),
+        ) from None
+
+
+def _move_into_place(folder: Path, target: Path) -> None:
+    try:
+        target.mkdir(parents=True, exist_ok=True)
+        for name in OUTPUTS:
+            old = target / name
+            if old.is_dir():
+                shutil.rmtree(old)
+            elif old.exists():
+                old.unlink()
+        for item in sorted(folder.iterdir()):
+            item.replace(target / item.name)
+    except OSError as error:
+        raise OutputError(
+            "The results cannot be moved into place.",
+            where=str(target),
+            found=error.strerror or str(error),
+            advice="Close programs that have files of that folder open.",
+        ) from None

@@ -1,0 +1,267 @@
+"""The commands. No logic here: each reads its options, calls the job, prints what came of it."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
+import qa
+from qa.model.errors import PingworthyError
+
+if TYPE_CHECKING:
+    from qa.ingest import DayChoice
+    from qa.model.findings import Findings
+
+app = typer.Typer(
+    name="pingworthy",
+    help="Audits the ping logs of a finished sonar survey.\n\n"
+    "A screening aid: it makes no statement on the safety of navigation. Acceptance is for the surveyor in charge, "
+    "the contract and the authority.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+)
+
+Logs = Annotated[
+    list[str], typer.Argument(help="Log files, folders or patterns.", show_default=False)
+]
+Survey = Annotated[
+    Path | None, typer.Option("--survey", help="Survey file (TOML).", show_default=False)
+]
+Sheet = Annotated[
+    str | None,
+    typer.Option(
+        "--sheet", help="Rule sheet: a shipped one's name, or a path.", show_default=False
+    ),
+]
+Out = Annotated[Path, typer.Option("--out", help="Folder for the report and the files beside it.")]
+Limits = Annotated[
+    list[str] | None,
+    typer.Option(
+        "--set", help="Override a limit, as in --set target_size=0.5m.", show_default=False
+    ),
+]
+Day = Annotated[
+    str | None,
+    typer.Option(
+        "--day", help='Only this day on board: a date, "today" or "yesterday".', show_default=False
+    ),
+]
+Workers = Annotated[
+    int | None,
+    typer.Option(
+        "--workers", min=1, help="Processes at work at once.", show_default="by the logs' size"
+    ),
+]
+RequireAssessed = Annotated[
+    bool,
+    typer.Option(
+        "--require-assessed",
+        help="Count rules that were not assessed as out of spec in the exit status.",
+    ),
+]
+PagesChoice = Annotated[
+    str,
+    typer.Option("--pages", help="Lines in the report or on their own pages: auto, one or many."),
+]
+Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but errors.")]
+
+
+def _version(asked: bool) -> None:
+    if asked:
+        typer.echo(f"pingworthy {qa.__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _root(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")
+    ] = False,
+) -> None:
+    """Audits the ping logs of a finished sonar survey."""
+
+
+@app.command()
+def audit(
+    logs: Logs,
+    survey: Survey = None,
+    sheet: Sheet = None,
+    out: Out = Path("pingworthy-audit"),
+    limits: Limits = None,
+    day: Day = None,
+    workers: Workers = None,
+    require_assessed: RequireAssessed = False,
+    pages: PagesChoice = "auto",
+    quiet: Quiet = False,
+) -> None:
+    """Audit logs: which stretches of which lines are out of spec, why, and what to set for the re-run.
+
+    Exit status: 0 nothing out of spec, 1 something is, 2 an input could not be used, 3 an error of the program.
+    """
+    _audit(list(logs), survey, sheet, out, limits, day, workers, require_assessed, pages, quiet)
+
+
+@app.command()
+def demo(
+    out: Out = Path("pingworthy-demo"),
+    workers: Workers = None,
+    quiet: Quiet = False,
+) -> None:
+    """Audit the shipped sample: a made-up survey with known faults. Exit status 0 when it ran."""
+    from qa.model.shipped import shipped
+
+    folder = shipped("sample_logs")
+    logs = [str(folder / name) for name in ("multibeam", "side_scan", "single_beam")]
+    try:
+        _audit(logs, folder / "survey.toml", None, out, None, None, workers, False, "auto", quiet)
+    except typer.Exit as ended:
+        # The sample has faults on purpose, and finding them is what the demo shows.
+        if ended.exit_code != 1:
+            raise
+
+
+def _audit(
+    logs: list[str],
+    survey: Path | None,
+    sheet: str | None,
+    out: Path,
+    limits: list[str] | None,
+    day: str | None,
+    workers: int | None,
+    require_assessed: bool,
+    pages: str,
+    quiet: bool,
+) -> None:
+    from qa.audit import audit as run
+    from qa.model.survey_file import load_survey_file
+    from qa.report import summary
+
+    if pages not in ("auto", "one", "many"):
+        raise PingworthyError(
+            "Not a way to lay out pages.",
+            where="--pages",
+            found=pages,
+            expected="auto, one or many",
+        )
+    facts = load_survey_file(survey) if survey else None
+    zone = facts.vessel_time_zone if facts else "UTC"
+    with _Progress(quiet) as progress:
+        findings: Findings = run(
+            logs,
+            facts,
+            sheet,
+            out,
+            limits=_overrides(limits or []),
+            day=_day(day, zone),
+            workers=workers,
+            require_assessed=require_assessed,
+            pages=pages,  # type: ignore[arg-type]  # checked above
+            progress=progress,
+        )
+    if not quiet:
+        typer.echo(summary(findings))
+        typer.echo(f"Report: {out / 'report.html'}")
+    for item in findings.inputs:
+        if item.error:
+            typer.echo(f"Not used: {item.error}", err=True)
+    for line in findings.lines:
+        if line.error and findings.exit_status == 3:
+            typer.echo(f"Line {line.line} failed: {line.error}", err=True)
+    raise typer.Exit(findings.exit_status)
+
+
+def _overrides(texts: list[str]) -> dict[str, str]:
+    found = {}
+    for text in texts:
+        name, equals, value = text.partition("=")
+        if not equals or not name.strip() or not value.strip():
+            raise PingworthyError(
+                "Not a limit with a value.", where="--set", found=text, expected="target_size=0.5m"
+            )
+        found[name.strip()] = value.strip()
+    return found
+
+
+def _day(text: str | None, zone: str) -> DayChoice | None:
+    if text is None:
+        return None
+    import datetime as dt
+    from zoneinfo import ZoneInfo
+
+    from qa.ingest import DayChoice
+
+    today = dt.datetime.now(ZoneInfo(zone)).date()
+    named = {"today": today, "yesterday": today - dt.timedelta(days=1)}
+    if text.lower() in named:
+        return DayChoice(named[text.lower()], zone)
+    try:
+        return DayChoice(dt.date.fromisoformat(text), zone)
+    except ValueError:
+        raise PingworthyError(
+            "Not a day.",
+            where="--day",
+            found=text,
+            expected='a date such as 2026-05-04, "today" or "yesterday"',
+        ) from None
+
+
+class _Progress:
+    """A bar on a terminal, a plain line for each tenth otherwise, nothing when quiet."""
+
+    def __init__(self, quiet: bool) -> None:
+        self.quiet, self.terminal = quiet, sys.stderr.isatty()
+        self.bar: Any = None
+        self.shown = -1
+
+    def __enter__(self) -> Callable[[int, int, str], None] | None:
+        return None if self.quiet else self.step
+
+    def step(self, done: int, total: int, name: str) -> None:
+        """One more line is done."""
+        if self.terminal:
+            if self.bar is None:
+                self.bar = typer.progressbar(length=total, label="Lines", file=sys.stderr)
+                self.bar.__enter__()
+            self.bar.update(1)
+            return
+        tenth = 10 * done // total
+        if tenth != self.shown:
+            self.shown = tenth
+            typer.echo(f"{done} of {total} lines done", err=True)
+
+    def __exit__(self, *_: object) -> None:
+        if self.bar is not None:
+            self.bar.__exit__(None, None, None)
+
+
+def main() -> None:
+    """Run the command; every error of the user's own ends in one message and status 2."""
+    for stream in (sys.stdout, sys.stderr):
+        # A Windows console may not know every letter; a name that cannot be printed is no reason to fail.
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")
+    try:
+        app()
+    except PingworthyError as error:
+        typer.echo(f"pingworthy: {error}", err=True)
+        sys.exit(2)
+    except KeyboardInterrupt:
+        typer.echo("pingworthy: stopped; nothing was written.", err=True)
+        sys.exit(130)
+    except Exception as error:
+        typer.echo(
+            f"pingworthy: an error of the program itself: {type(error).__name__}: {error}. Please report it, with the log "
+            "if you can.",
+            err=True,
+        )
+        sys.exit(3)
+
+
+if __name__ == "__main__":
+    main()
