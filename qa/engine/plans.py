@@ -111,11 +111,15 @@ class Plan:
 
 
 class _Missing(Exception):
-    """A name cannot be had; the exception carries the inputs that would be needed."""
+    """A name cannot be had; the exception carries the inputs that would be needed.
 
-    def __init__(self, names: Iterable[str], cyclic: bool = False) -> None:
+    ``had`` counts the logged inputs on the way that were there: the more, the likelier this way was meant.
+    """
+
+    def __init__(self, names: Iterable[str], cyclic: bool = False, had: int = 0) -> None:
         self.names = tuple(dict.fromkeys(names))
         self.cyclic = cyclic
+        self.had = had
         super().__init__(", ".join(self.names))
 
 
@@ -136,7 +140,7 @@ class Resolver:
     def __init__(self, sheet: RuleSheet, available: Available) -> None:
         self.sheet, self.available = sheet, available
         self.nodes: dict[str, Node] = {}
-        self.failed: dict[str, tuple[str, ...]] = {}
+        self.failed: dict[str, _Missing] = {}
         self.open: list[str] = []
 
     def resolve(self, key: str) -> Node:
@@ -144,7 +148,7 @@ class Resolver:
         if key in self.nodes:
             return self.nodes[key]
         if key in self.failed:
-            raise _Missing(self.failed[key])
+            raise self.failed[key]
         if key in self.open:
             raise _Missing((key,), cyclic=True)
         self.open.append(key)
@@ -152,7 +156,7 @@ class Resolver:
             node = self._found(key)
         except _Missing as missing:
             if not missing.cyclic:
-                self.failed[key] = missing.names
+                self.failed[key] = missing
             raise
         finally:
             self.open.pop()
@@ -189,8 +193,11 @@ class Resolver:
             candidates.append(node)
         if not candidates:
             own = key in COLUMNS or quantities.is_stated_key(key)
-            names = (key,) if own or not missing else missing[0].names
-            raise _Missing(names, cyclic=any(m.cyclic for m in missing) and not own)
+            nearest = max(missing, key=lambda m: m.had, default=_Missing((key,)))
+            names = (key,) if own and not nearest.had else nearest.names
+            raise _Missing(
+                names, cyclic=any(m.cyclic for m in missing) and not own, had=nearest.had
+            )
         return min(candidates, key=lambda c: _RANK[c.origin])
 
     def _usable(self, recipe: Recipe) -> bool:
@@ -236,7 +243,7 @@ class Resolver:
         inputs: list[Node] = []
         absent: set[str] = set()
         missing: list[str] = []
-        cyclic = False
+        cyclic, had = False, 0
         for need in recipe.needs:
             try:
                 inputs.append(self.resolve(need))
@@ -245,9 +252,9 @@ class Resolver:
                     absent.add(need)
                 else:
                     missing += error.names
-                    cyclic = cyclic or error.cyclic
+                    cyclic, had = cyclic or error.cyclic, had + error.had
         if missing:
-            raise _Missing(missing, cyclic)
+            raise _Missing(missing, cyclic, had + sum(_RANK[n.origin] < 2 for n in inputs))
         grain = grain_of(*(n.grain for n in inputs))
         if recipe.whole_line:
             if grain == "beam":
@@ -289,15 +296,15 @@ class Resolver:
         """The nodes of some names; raises :class:`_Missing` with all that are lacking."""
         found: list[Node] = []
         missing: list[str] = []
-        cyclic = False
+        cyclic, had = False, 0
         for name in sorted(names):
             try:
                 found.append(self.resolve(name))
             except _Missing as error:
                 missing += error.names
-                cyclic = cyclic or error.cyclic
+                cyclic, had = cyclic or error.cyclic, had + error.had
         if missing:
-            raise _Missing(missing, cyclic)
+            raise _Missing(missing, cyclic, had)
         return found
 
     def _called(self, key: str) -> Node:
