@@ -375,7 +375,8 @@ def backscatter_per_area(
     at_start = oblique + 2.0 * _decibels(np.cos(_RADIANS * oblique_from))
     with np.errstate(divide="ignore", invalid="ignore"):
         near_normal = normal + (at_start - normal) * angle / oblique_from
-    return chosen(angle >= oblique_from, lambert, near_normal)
+    # An unknown seabed stays unknown, also where the other of its two strengths decides.
+    return chosen(angle >= oblique_from, lambert, near_normal) + 0.0 * (normal + oblique)
 
 
 def ensonified_area(
@@ -500,24 +501,26 @@ def detection_threshold_steady(
 
     Notes
     -----
-    Albersheim's approximation for one sample and an envelope detector: within 0.2 dB of the
-    exact result for detection 0.1 to 0.9 and false alarm 1e-7 to 1e-3.
+    Exact for one sample and an envelope detector: the envelope's square is a noncentral
+    chi-square with two degrees of freedom. Minus infinity where noise alone does it.
 
     References
     ----------
-    .. [1] Albersheim, Proc. IEEE 69(7), 839, 1981.
+    .. [1] Marcum, Trans. IRE IT-6, 59-267, 1960.
 
     Examples
     --------
     >>> round(float(detection_threshold_steady(0.9, 1e-6)), 2)
-    13.14
+    13.18
     """
+    from scipy.special import chndtrinc
+
     detection, false_alarm = floats(chance_of_detection, chance_of_false_alarm)
     with np.errstate(divide="ignore", invalid="ignore"):
-        a: FloatArray = np.log(0.62 / false_alarm)
-        b = np.log(detection / (1.0 - detection))
-        threshold = _decibels(a + 0.12 * a * b + 1.7 * b)
-    return threshold
+        needs_echo = detection > false_alarm
+        excess = chndtrinc(-2.0 * np.log(false_alarm), 2.0, 1.0 - detection)
+        ratio: FloatArray = np.where(needs_echo, 0.5 * excess, 0.0)
+    return _decibels(ratio + 0.0 * (detection + false_alarm))
 
 
 def detection_threshold_fluctuating(
