@@ -129,24 +129,22 @@ def speed_at_depth(
     inside = np.clip(below, water.top[..., 1:2], water.bottom[..., -2:-1])
     steps = np.clip(inside - water.top, 0.0, water.bottom - water.top)[..., 1:-1]
     gained: FloatArray = np.sum(steps * water.gradient[..., 1:-1], axis=-1)
-    unknown = 0.0 * (depth + np.sum(water.speed_at_top + 0.0 * water.top[..., 1:2], axis=-1))
-    speed: FloatArray = (water.speed_at_top[..., 0] + gained + unknown)[()]
+    unknown = np.isnan(depth) | np.isnan(water.speed_at_top + water.top).any(axis=-1)
+    speed: FloatArray = np.where(unknown, np.nan, water.speed_at_top[..., 0] + gained)[()]
     return speed
 
 
 def _log1p_ratio(x: FloatArray) -> FloatArray:
     """log(1 + x) / x, one at zero."""
-    small = np.abs(x) < 1e-300
-    safe = np.where(small, 1.0, x)
-    ratio: FloatArray = np.where(small, 1.0, np.log1p(safe) / safe)
+    ratio: FloatArray = np.ones_like(x)
+    np.divide(np.log1p(x), x, out=ratio, where=x != 0.0)
     return ratio
 
 
 def _expm1_ratio(x: FloatArray) -> FloatArray:
     """(exp(x) - 1) / x, one at zero."""
-    small = np.abs(x) < 1e-300
-    safe = np.where(small, 1.0, x)
-    ratio: FloatArray = np.where(small, 1.0, np.expm1(safe) / safe)
+    ratio: FloatArray = np.ones_like(x)
+    np.divide(np.expm1(x), x, out=ratio, where=x != 0.0)
     return ratio
 
 
@@ -238,21 +236,17 @@ def trace_ray(
     down = np.where(np.abs(angles) <= 90.0, 1.0, -1.0)
     sine = np.sin(radians)
     cosine = np.abs(np.cos(radians))
-    cosine[np.abs(angles) == 90.0] = 0.0
     turned = np.zeros(depth.shape, dtype=bool)
     surfaced = np.zeros(depth.shape, dtype=bool)
     speed = np.broadcast_to(speed_at_depth(profile_depth, profile_speed, start), shape)
     speed = speed.astype(np.float64).ravel()
     # At a layer's edge a ray belongs to the layer that it is about to enter.
-    edge = np.where(down > 0.0, 1.0, 0.0)[:, np.newaxis]
-    at_or_above = np.where(edge > 0.0, bottom[cast] <= depth[:, np.newaxis], False)
-    above = np.where(edge > 0.0, at_or_above, bottom[cast] < depth[:, np.newaxis])
-    layer = np.minimum(above.sum(axis=-1), layers - 1)
+    level = depth[:, np.newaxis]
+    left_above = np.where(down[:, np.newaxis] > 0.0, bottom[cast] <= level, bottom[cast] < level)
+    layer = left_above.sum(axis=-1)
 
-    unknown = ~np.isfinite(
-        depth + angles + left + speed + np.where(np.isfinite(top), top, 0.0)[cast].sum(axis=-1)
-    )
-    unknown |= np.isnan(gradients[cast]).any(axis=-1)
+    unknown = ~np.isfinite(depth + angles + left + speed)
+    unknown |= np.isnan(top[cast] + gradients[cast]).any(axis=-1)
     active = np.flatnonzero(~unknown & (left > 0.0))
     for _ in range(_MOST_STEPS):
         if active.size == 0:
@@ -315,7 +309,6 @@ def _one_layer(
         # An endless even layer: any way longer than the time allows will do.
         way = np.where(np.isinf(way), 2.0 * c * t + 1.0, way)
         turns = (g > 0.0) & (s * (1.0 + g * way / c) >= 1.0)
-        turns |= (k == 0.0) & (g > 0.0)
         time_to_turn = np.log((1.0 + k) / s) / g
         across_to_turn = c * k / (g * s)
         time_to_edge, across_to_edge, sine_at_edge = _arc_to_depth(c, g, s, k, way)
@@ -336,10 +329,7 @@ def _one_layer(
     across[last] += grown * (half + after) / (1.0 + after * after)
     sine[last] = 2.0 * after / (1.0 + after * after)
     upright = (1.0 - after * after) / (1.0 + after * after)
-    turned[last] |= upright < 0.0
-    down[last] = np.where(upright < 0.0, -de, de)
-    cosine[last] = np.abs(upright)
-    left[last] = 0.0
+    cosine[last] = np.maximum(upright, 0.0)
 
     # Those that turn: set level exactly, and sent back through the same layer.
     back = turns & ~ends
@@ -450,7 +440,7 @@ def ray_to_depth(
         speed = water.speed_at_top + water.gradient * below_top
         sine = parameter * speed
         sine_after = parameter * (speed + water.gradient * way)
-        passes = (np.maximum(sine, sine_after) < 1.0) | (way <= 0.0)
+        passes = np.maximum(sine, sine_after) < 1.0
         cosine = np.sqrt(np.maximum((1.0 - sine) * (1.0 + sine), 0.0))
         time, across, _ = _arc_to_depth(speed, water.gradient, sine, cosine, way)
         time = np.where(way > 0.0, np.where(passes, time, np.inf), 0.0).sum(axis=-1)

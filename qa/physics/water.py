@@ -457,8 +457,9 @@ def choose_sound_speed(
     )[()]
     unesco_range = unesco_in_range(t, effective_salinity, pressure)
     in_range = np.select(
-        [formula == 0, formula == 3, formula > 0],
-        [marczak_in_range(t, s, d), deep, unesco_range & (s >= 0.0)],
+        [formula == 0, formula > 0],
+        # Del Grosso is chosen in its own range only, which lies inside that of UNESCO 44.
+        [marczak_in_range(t, s, d), unesco_range & (s >= 0.0)],
         False,
     )
     return ChosenSoundSpeed(speed, formula, in_range.astype(np.bool_))
@@ -663,7 +664,7 @@ def _time_and_speed_at(
     """Travel time from the cast's first depth to a depth, and the speed there."""
     inside = np.clip(depth, nodes[0], nodes[-1])
     speed: FloatArray = np.interp(inside, nodes, speeds)
-    layer = np.clip(np.searchsorted(nodes, inside, side="right") - 1, 0, len(nodes) - 1)
+    layer = np.searchsorted(nodes, inside, side="right") - 1
     first = speeds[layer]
     within = (inside - nodes[layer]) / first * _log1p_ratio((speed - first) / first)
     return times[layer] + within + (depth - inside) / speed, speed

@@ -33,7 +33,33 @@ PHYSICS = ROOT / "qa" / "physics"
 PATIENCE = 90.0
 
 # (module, part of the line, number as written) -> why no result can change.
-NO_EFFECT: dict[tuple[str, str, str], str] = {}
+NO_EFFECT: dict[tuple[str, str, str], str] = {
+    ("beams", "np.any(~(edges > 1e-12))", "1e-12"): "only spares ordinary batches a check",
+    ("echoes", "np.linspace(0.0, 1.0, 241)", "241"): "number of brackets",
+    ("echoes", "reshape((-1,)", "1"): "numpy takes any negative number there",
+    ("echoes", "np.minimum(last, 239)", "239"): "differs only where the result is infinite",
+    ("echoes", "np.minimum(last + 1, 240)", "1"): "a wider bracket of the same fall",
+    ("echoes", "for _ in range(32)", "32"): "one halving more",
+    ("ground", "np.where(known, a, 0.0)", "0.0"): "stands in for positions that come out NaN",
+    ("hits", "else 5e-7", "5e-7"): "no float32 lies between",
+    ("hits", "needed <= 0.0", "0.0"): "counts are whole",
+    ("rays", "_MOST_STEPS = ", "100_000"): "where to give up",
+    ("rays", "np.any(speeds <= 0.0)", "0.0"): "no water is that slow",
+    ("rays", "water.speed_at_top[..., 0]", "0"): "the layer above carries the same speed",
+    ("rays", ".reshape(-1, layers)", "1"): "numpy takes any negative number there",
+    ("rays", "np.where(down[:, np.newaxis] > 0.0", "0.0"): "a direction is 1 or -1",
+    ("rays", "goal = np.where(d > 0.0", "0.0"): "a direction is 1 or -1",
+    ("rays", "heading_down = d[cross] > 0.0", "0.0"): "a direction is 1 or -1",
+    ("rays", "2.0 * c * t + 1.0", "2.0"): "any way too long for the time",
+    ("rays", "2.0 * c * t + 1.0", "1.0"): "any way too long for the time",
+    ("rays", "np.minimum(sine_at_edge[cross], 1.0)", "1.0"): "guards against rounding",
+    ("rays", "np.minimum(last_sine, 1.0)", "1.0"): "guards against rounding",
+    ("rays", "np.where(water.gradient == 0.0, 0.0", "0.0"): "multiplied by a gradient of zero",
+    ("uncertainty", "feature_share: float = 0.0", "0.0"): "used by no order without a depth",
+    ("water", "pressure = 1.01 * depth", "1.01"): "where the iteration begins",
+    ("water", "for _ in range(12)", "12"): "one pass more",
+    ("water", "pressure + 1.02 *", "1.02"): "pace of the iteration",
+}
 
 SWAPPED = {ast.Add: "-", ast.Sub: "+", ast.Mult: "/", ast.Div: "*"}
 WRITTEN = {ast.Add: "+", ast.Sub: "-", ast.Mult: "*", ast.Div: "/"}

@@ -37,6 +37,7 @@ def test_beam_that_does_not_point_down_meets_no_seabed() -> None:
         assert np.isnan(result).tolist() == [True, False, True, True]
     assert np.isnan(beams.steered_beamwidth(1.0, [90.0, -95.0])).all()
     assert np.isnan(beams.footprint_across(10.0, [90.0, -95.0], 1.0)).all()
+    assert np.isnan(beams.footprint_across(10.0, 90.4, 0.5))
 
 
 @given(angles, st.floats(-20.0, 20.0))
@@ -105,7 +106,7 @@ def test_beam_limited_footprints_grow_in_proportion_to_depth(
 
 
 def test_footprint_whose_outer_edge_is_level_is_endless() -> None:
-    got = beams.footprint_across([10.0, 10.0, 10.0], [89.0, 89.5, 89.9], [1.0, 1.0, 1.0])
+    got = beams.footprint_across(10.0, [89.497, 89.5, 89.9], 1.0)
     assert np.isfinite(got[0])
     assert np.isinf(got[1:]).all()
     assert np.isinf(beams.footprint_across(10.0, -88.0, 10.0))
@@ -131,7 +132,8 @@ def test_slope_footprint_is_where_the_edges_meet_the_slope(
 def test_beam_along_or_behind_a_slope_meets_nothing() -> None:
     got = beams.footprint_across_on_slope(10.0, [-60.0, -60.0, 89.0], 1.0, [29.0, 30.0, 0.0])
     assert np.isnan(got).tolist() == [False, True, False]
-    assert np.isnan(beams.footprint_across_on_slope(10.0, 91.0, 1.0, 10.0))
+    assert np.isnan(beams.footprint_across_on_slope(10.0, 90.4, 1.0, 10.0))
+    assert np.isnan(beams.footprint_across_on_slope(10.0, -60.0, 1.0, 30.4))
 
 
 @given(heights, st.floats(1.0, 80.0), st.floats(0.001, 1.0))

@@ -214,7 +214,7 @@ def test_nan_in_is_nan_out_and_nowhere_else(name: str) -> None:
             assert not result[1]
             continue
         assert np.isnan(result[1]), f"{name}: NaN in {key} came out as {result[1]}"
-        assert np.isfinite(result[[0, 2]]).all()
+        np.testing.assert_allclose(result[[0, 2]], np.full(2, function(**inputs)), rtol=1e-12)
 
 
 @pytest.mark.parametrize(
@@ -230,6 +230,32 @@ def test_float32_stays_float32_and_close(name: str) -> None:
     assert single.dtype == np.float32
     rounded = {k: float(np.float32(v)) for k, v in inputs.items()}
     np.testing.assert_allclose(single, np.full(3, function(**rounded)), rtol=2e-5)
+
+
+# What a parameter is when it is left out; all others add nothing.
+LEFT_OUT = {
+    "latitude": 45.0,
+    "acidity": 8.0,
+    "pings_in_water": 1.0,
+    "cross_line_spacing": np.inf,
+    "backscatter_normal": -15.0,
+    "backscatter_oblique": -30.0,
+    "oblique_from": 25.0,
+}
+
+
+def _optional(function: Callable[..., Any]) -> list[str]:
+    parameters = inspect.signature(function).parameters.values()
+    return [p.name for p in parameters if isinstance(p.default, (int, float))]
+
+
+@pytest.mark.parametrize("name", [n for n, f in PLAIN.items() if _optional(f)])
+def test_input_left_out_is_what_the_docstring_says(name: str) -> None:
+    function = PLAIN[name]
+    inputs = _inputs(function)
+    for left_out in _optional(function):
+        given = function(**{**inputs, left_out: LEFT_OUT.get(left_out, 0.0)})
+        assert function(**{k: v for k, v in inputs.items() if k != left_out}) == given
 
 
 @pytest.mark.parametrize("name", EVERY)

@@ -264,6 +264,12 @@ def test_last_fall_counts_not_the_first() -> None:
     assert found == pytest.approx(69.0, rel=1e-6)
 
 
+def test_range_just_inside_the_longest_is_found_and_beyond_it_is_not() -> None:
+    for root, found in ((19800.0, 19800.0), (20100.0, np.inf)):
+        got = echoes.greatest_range(lambda r, root=root: root - r)
+        assert got == pytest.approx(found)
+
+
 def side_scan_of_the_handbooks_day(target_strength: float, range_scale: float) -> float:
     """Greatest range of a 100 kHz side-scan, with inputs stated here.
 

@@ -41,6 +41,7 @@ def test_equal_positions_have_no_course() -> None:
     assert same.distance == 0.0
     assert np.isnan(same.course)
     assert ground.course(50.0, 5.0, 49.0, 5.0) == pytest.approx(180.0)
+    assert ground.course(50.0, 5.0, 50.0 + 5e-8, 5.0) == pytest.approx(0.0, abs=0.1)
 
 
 def test_unknown_positions_stay_unknown_and_shapes_broadcast() -> None:
@@ -60,6 +61,7 @@ def test_speed_needs_time() -> None:
     got = ground.speed_over_ground([20.0, 20.0, 20.0, NAN], [10.0, 0.0, -1.0, 10.0])
     assert got[0] == 2.0
     assert np.isnan(got[1:]).all()
+    assert ground.speed_over_ground(0.01, 0.005) == 2.0
 
 
 def test_offsets_turn_with_the_heading() -> None:
@@ -94,8 +96,8 @@ def test_speed_from_fixes_leaves_out_zero_and_missing_positions() -> None:
     t = np.arange(0.0, 40.0)
     longitude = 5.0 + t * 2.0 / 111319.49
     latitude = np.zeros(t.shape)
-    longitude[12:18] = 0.0
-    longitude[25] = NAN
+    longitude[8:22] = 0.0
+    longitude[30] = NAN
     speed = ground.speed_from_fixes(t, latitude, longitude)
     assert speed == pytest.approx(np.full(t.shape, 2.0), rel=1e-6)
 
@@ -108,6 +110,23 @@ def test_change_of_speed_is_followed_fix_by_fix() -> None:
     assert speed[20:] == pytest.approx(np.full(21, 3.0), rel=1e-6)
     longer = ground.speed_from_fixes(t, np.zeros(t.shape), 5.0 + metres / 111319.49, 30.0)
     assert longer == pytest.approx(np.full(41, 2.0), rel=1e-6)
+
+
+def test_every_stretch_has_its_own_speed() -> None:
+    t = np.arange(0.0, 31.0)
+    metres = np.interp(t, [0.0, 10.0, 20.0, 30.0], [0.0, 10.0, 40.0, 90.0])
+    speed = ground.speed_from_fixes(t, np.zeros(t.shape), 5.0 + metres / 111319.49)
+    expected = np.repeat([1.0, 3.0, 5.0], [10, 10, 11])
+    assert speed == pytest.approx(expected, rel=1e-6)
+
+
+def test_equator_and_the_first_meridian_are_places() -> None:
+    t = np.arange(0.0, 21.0)
+    metres = (t + 1.0) / 111319.49
+    on_equator = ground.speed_from_fixes(t, np.zeros(t.shape), metres)
+    assert on_equator == pytest.approx(np.ones(t.shape), rel=1e-6)
+    on_meridian = ground.speed_from_fixes(t, metres, np.zeros(t.shape))
+    assert on_meridian == pytest.approx(np.full(t.shape, 110574.28 / 111319.49), rel=1e-5)
 
 
 def test_speed_from_too_few_fixes_is_not_known() -> None:

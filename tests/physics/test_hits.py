@@ -67,6 +67,8 @@ def test_tolerance_is_a_billionth_and_no_more() -> None:
     assert hits.guaranteed_hits(1.0, 0.0, 0.2 * (1.0 + 5e-9)) == 4.0
     assert hits.possible_hits(1.0, 0.0, 0.2 * (1.0 - 5e-10)) == 5.0
     assert hits.possible_hits(1.0, 0.0, 0.2 * (1.0 - 5e-9)) == 6.0
+    assert hits.guaranteed_hits(1.0, 0.0, 0.2 * (1.0 + 0.995e-9)) == 5.0
+    assert hits.guaranteed_hits(1.0, 0.0, 0.2 * (1.0 + 1.005e-9)) == 4.0
 
 
 def test_float32_multiples_are_counted_whole() -> None:
@@ -79,7 +81,9 @@ def test_float32_multiples_are_counted_whole() -> None:
 def test_standing_vessel_hits_for_ever_and_nothing_is_never_hit() -> None:
     assert np.isinf(hits.guaranteed_hits(1.0, 0.5, 0.0))
     assert hits.extra_hit_chance(1.0, 0.5, 0.0) == 0.0
+    assert np.isinf(hits.guaranteed_hits(0.005, 0.005, 0.0))
     assert hits.guaranteed_hits(0.0, 0.0, 0.0) == 0.0
+    assert hits.possible_hits(0.0, 0.0, 0.0) == 0.0
     assert hits.guaranteed_hits(0.0, 0.0, 1.0) == 0.0
     assert hits.possible_hits(0.0, 0.0, 1.0) == 0.0
 

@@ -61,7 +61,16 @@ def test_window_of_a_pulse_longer_than_the_span_is_empty() -> None:
 
 
 @pytest.mark.parametrize(
-    ("interval", "pings"), [(0.5, 1.0), (0.1, 2.0), (0.2 / 3.0, 3.0), (0.0999, 3.0), (0.1001, 2.0)]
+    ("interval", "pings"),
+    [
+        (0.5, 1.0),
+        (0.1, 2.0),
+        (0.2 / 3.0, 3.0),
+        (0.0999, 3.0),
+        (0.1001, 2.0),
+        (0.1 * (1.0 - 0.995e-9), 2.0),
+        (0.1 * (1.0 - 1.005e-9), 3.0),
+    ],
 )
 def test_pings_needed_in_the_water(interval: float, pings: float) -> None:
     assert pulse.pings_in_water_needed(0.2, interval) == pings

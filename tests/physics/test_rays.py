@@ -81,7 +81,7 @@ def integrated(
         # Bent back downwards by the fast water above it, and upwards by that below.
         (20.0, 96.0, 0.20),
         (31.0, 89.5, 0.60),
-        (40.0, -91.0, 0.50),
+        (40.0, -90.4, 0.50),
     ],
 )
 def test_ray_agrees_with_a_numerical_integration(start: float, angle: float, time: float) -> None:
@@ -149,9 +149,10 @@ def test_arc_of_a_constant_gradient_is_the_handbooks() -> None:
     assert there.angle == pytest.approx(math.degrees(after), rel=1e-9)
 
 
-def test_turning_ray_comes_back_to_its_depth_in_the_time_of_a_full_arc() -> None:
-    c_0, g, angle = 1480.0, 0.5, math.radians(80.0)
-    nodes, speeds = [0.0, 2000.0], [c_0 - g * 100.0, c_0 + g * 1900.0]
+@pytest.mark.parametrize("g", [0.5, 0.005])
+def test_turning_ray_comes_back_to_its_depth_in_the_time_of_a_full_arc(g: float) -> None:
+    c_0, angle = 1480.0, math.radians(80.0)
+    nodes, speeds = [0.0, 1e4], [c_0 - g * 100.0, c_0 + g * 9900.0]
     half = math.log(1.0 / math.tan(angle / 2.0)) / g
     end = rays.trace_ray(nodes, speeds, 100.0, 80.0, 2.0 * half)
     assert end.turned
@@ -160,7 +161,11 @@ def test_turning_ray_comes_back_to_its_depth_in_the_time_of_a_full_arc() -> None
     assert end.across == pytest.approx(2.0 * c_0 / g / math.tan(angle), rel=1e-9)
     at_turn = rays.trace_ray(nodes, speeds, 100.0, 80.0, half)
     assert at_turn.depth == pytest.approx(100.0 + c_0 / g * (1.0 / math.sin(angle) - 1.0))
-    crossing = rays.ray_to_depth(nodes, speeds, 100.0, 80.0, 1000.0)
+    assert at_turn.angle == pytest.approx(90.0, abs=1e-6)
+    deepest = 100.0 + c_0 / g * (1.0 / math.sin(angle) - 1.0)
+    reached = rays.ray_to_depth(nodes, speeds, 100.0, 80.0, 0.999 * deepest)
+    assert reached.travel_time < half
+    crossing = rays.ray_to_depth(nodes, speeds, 100.0, 80.0, 1.001 * deepest)
     assert np.isinf(crossing.travel_time)
     assert np.isinf(crossing.across)
     assert crossing.angle == 90.0
@@ -177,6 +182,25 @@ def test_level_ray_in_even_water_stays_level() -> None:
     end = rays.trace_ray([0.0, 100.0], [1500.0, 1500.0], 15.0, [90.0, -90.0], 0.1)
     assert end.depth.tolist() == [15.0, 15.0]
     assert end.across == pytest.approx([150.0, -150.0])
+
+
+def test_ray_of_endless_turns_is_given_up_with_a_reason(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(rays, "_MOST_STEPS", 10)
+    with pytest.raises(ValueError, match="1 rays were not at their end after 10 layers"):
+        rays.trace_ray([0.0, 50.0, 100.0], [1510.0, 1490.0, 1510.0], 50.0, 85.0, 100.0)
+
+
+@pytest.mark.parametrize("angle", [30.0, 88.0, 89.5])
+@pytest.mark.parametrize("way", [0.005, 3.0, 30.0])
+def test_cast_that_begins_below_the_transducer_is_carried_up(angle: float, way: float) -> None:
+    nodes, speeds = [5.0, 30.0, 60.0], [1500.0, 1495.0, 1490.0]
+    there = rays.ray_to_depth(nodes, speeds, 2.0, angle, 2.0 + way)
+    end = rays.trace_ray(nodes, speeds, 2.0, angle, there.travel_time)
+    assert end.depth == pytest.approx(2.0 + way, abs=1e-6)
+    assert end.across == pytest.approx(float(there.across), rel=1e-6)
+    if way < 3.1:
+        straight = way / math.cos(math.radians(angle)) / 1500.0
+        assert there.travel_time == pytest.approx(straight, rel=1e-9)
 
 
 def test_trapped_ray_keeps_to_its_channel() -> None:
@@ -280,7 +304,7 @@ def test_speed_at_depth_is_that_of_the_cast_and_carried_on() -> None:
 @pytest.mark.parametrize(
     ("depths", "speeds", "message"),
     [
-        ([0.0, 10.0, 5.0], [1500.0] * 3, "10 m followed by 5 m at entry 3"),
+        ([0.0, 0.005, 10.0, 5.0], [1500.0] * 4, "10 m followed by 5 m at entry 4"),
         ([0.0, 10.0], [1500.0, 0.0], "above zero: found 0 m/s"),
         ([], [], "at least one depth"),
     ],
@@ -288,6 +312,11 @@ def test_speed_at_depth_is_that_of_the_cast_and_carried_on() -> None:
 def test_cast_that_cannot_be_used_is_refused(depths, speeds, message: str) -> None:
     with pytest.raises(ValueError, match=message):
         rays.trace_ray(depths, speeds, 1.0, 10.0, 0.1)
+
+
+def test_cast_of_a_dense_probe_is_taken() -> None:
+    end = rays.trace_ray([0.0, 0.005, 0.01], [1500.0] * 3, 0.0, 0.0, 0.01)
+    assert end.depth == pytest.approx(15.0)
 
 
 @given(st.floats(-70.0, 70.0), st.floats(1450.0, 1550.0), st.floats(1450.0, 1550.0))

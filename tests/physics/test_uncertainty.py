@@ -187,6 +187,18 @@ def test_position_is_the_root_of_its_reported_terms() -> None:
     assert tilted.across["surface sound speed"] < terms.across["surface sound speed"]
 
 
+def test_terms_that_are_not_given_are_zero() -> None:
+    for sigma in uncertainty.vertical_terms(Z, BETA, C).values():
+        assert sigma == 0.0
+    terms = uncertainty.horizontal_terms(Z, BETA, C)
+    for sigma in [*terms.along.values(), *terms.across.values()]:
+        assert sigma == 0.0
+    assert uncertainty.vertical_terms(Z, BETA, C, pitch_sigma=1.0)["pitch"] == 0.0
+    assert uncertainty.horizontal_terms(Z, BETA, C, latency_sigma=1.0).along["timing"] == 0.0
+    level = uncertainty.vertical_terms(Z, BETA, C, roll_sigma=1.0)["roll"]
+    assert level == uncertainty.vertical_roll(Z, BETA, 1.0, 0.0)
+
+
 def test_nothing_uncertain_is_no_uncertainty() -> None:
     assert uncertainty.vertical_uncertainty(Z, BETA, C) == 0.0
     assert uncertainty.horizontal_uncertainty(Z, BETA, C) == 0.0

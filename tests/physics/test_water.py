@@ -158,7 +158,13 @@ def test_harmonic_mean_of_even_water_is_its_speed() -> None:
     ]
 
 
+def test_cast_of_a_dense_probe_is_taken() -> None:
+    assert water.harmonic_mean_sound_speed([0.0, 0.005, 0.01], [1500.0] * 3, 1.0) == 1500.0
+
+
 def test_cast_covers_the_way_or_not() -> None:
+    assert water.profile_covers([0.0, 50.0], 40.0)
+    assert not water.profile_covers([0.5, 50.0], 40.0)
     covers = water.profile_covers([2.0, 50.0], [50.0, 50.1, 40.0, NAN], [2.0, 2.0, 1.9, 2.0])
     assert covers.tolist() == [True, False, False, False]
 
@@ -166,7 +172,7 @@ def test_cast_covers_the_way_or_not() -> None:
 @pytest.mark.parametrize(
     ("depths", "speeds", "message"),
     [
-        ([0.0, 10.0, 10.0], [1500.0] * 3, "10 m followed by 10 m at entry 3"),
+        ([0.0, 0.005, 10.0, 10.0], [1500.0] * 4, "10 m followed by 10 m at entry 4"),
         ([0.0, 20.0, 10.0, 30.0], [1500.0] * 4, "20 m followed by 10 m at entry 3"),
         ([0.0, 10.0], [1500.0], "as many depths as speeds"),
         ([], [], "at least one"),

@@ -29,10 +29,10 @@ def _teos_10(temperature: np.ndarray, salinity: np.ndarray, pressure: np.ndarray
 
 def test_unesco_44_agrees_with_seawater_within_a_centimetre_a_second() -> None:
     t, s, p = _grid(
-        np.linspace(0.0, 40.0, 9), np.linspace(0.0, 40.0, 9), np.linspace(0.0, 10000.0, 11)
+        np.linspace(0.0, 40.0, 9), np.geomspace(1e-3, 40.0, 9), np.linspace(0.0, 10000.0, 11)
     )
     reference = _seawater().svel(s, t, p)
-    assert np.abs(water.sound_speed_unesco(t, s, p) - reference).max() < 1e-6
+    assert np.abs(water.sound_speed_unesco(t, s, p) - reference).max() < 1e-9
 
 
 def test_depth_from_pressure_agrees_with_seawater() -> None:
@@ -98,11 +98,11 @@ def test_fresh_water_below_20_m_agrees_with_iapws_95() -> None:
             assert abs(float(water.sound_speed(temperature, 0.0, depth)) - reference) < 0.1
 
 
-def test_francois_and_garrison_agrees_with_arlpy_within_a_thousandth() -> None:
+def test_francois_and_garrison_agrees_with_arlpy_far_within_a_thousandth() -> None:
     uwa = pytest.importorskip("arlpy.uwa")
     frequencies = np.geomspace(400.0, 1e6, 20)
     worst = 0.0
-    for temperature in (-1.0, 5.0, 10.0, 15.0, 19.9, 20.5, 22.0, 30.0):
+    for temperature in (-1.0, 5.0, 10.0, 15.0, 19.9, 20.1, 22.0, 30.0):
         for salinity in (0.0, 10.0, 30.0, 35.0):
             for depth in (0.0, 200.0, 1000.0, 3500.0):
                 for acidity in (7.7, 8.0, 8.3):
@@ -112,7 +112,7 @@ def test_francois_and_garrison_agrees_with_arlpy_within_a_thousandth() -> None:
                     linear = uwa.absorption(frequencies, 1.0, temperature, salinity, depth, acidity)
                     reference = -20.0 * np.log10(linear)
                     worst = max(worst, float(np.abs(got / reference - 1.0).max()))
-    assert worst < 1e-3
+    assert worst < 1e-7
 
 
 def test_ainslie_and_mccolm_stays_near_francois_and_garrison() -> None:
