@@ -160,6 +160,8 @@ def _arc_to_depth(
     sine_after = sine * (1.0 + change)
     cosine_after = np.sqrt(np.maximum((1.0 - sine_after) * (1.0 + sine_after), 0.0))
     both = cosine + cosine_after
+    # Level before and after: there was no way at all, and 0/0 shall be none.
+    both = np.where(both == 0.0, np.inf, both)
     ratio = change * (sine * sine * (2.0 + change) / both + 1.0 + cosine) / (1.0 + cosine_after)
     slope = sine * sine * (2.0 + change) / both + 1.0 + cosine
     time = way / speed * slope / (1.0 + cosine_after) * _log1p_ratio(ratio)
@@ -302,6 +304,14 @@ def _one_layer(
     t = left[active]
     place = (cast[active], layer[active])
     g = d * gradients[place]
+    # Level on the axis of a channel, where the water on either side bends it back: it stays. A
+    # cosine of 1e-6 would lift it off the axis by less than a micrometre.
+    side = np.clip(place[1] - d.astype(np.intp), 0, gradients.shape[-1] - 1)
+    behind = -d * gradients[place[0], side]
+    start = np.where(d > 0.0, top[place], bottom[place])
+    stays = (k < 1e-6) & (z == start) & (g >= 0.0) & (behind >= 0.0)
+    g = np.where(stays, 0.0, g)
+    k = np.where(stays, 0.0, k)
     ceiling = np.maximum(top[place], surface[active])
     goal = np.where(d > 0.0, bottom[place], ceiling)
     way = d * (goal - z)

@@ -203,6 +203,26 @@ def test_cast_that_begins_below_the_transducer_is_carried_up(angle: float, way: 
         assert there.travel_time == pytest.approx(straight, rel=1e-9)
 
 
+@pytest.mark.parametrize("angle", [90.0, 90.00003, 89.99997])
+@pytest.mark.parametrize("upper", [1510.0, 1490.0])
+def test_level_ray_on_the_axis_of_a_channel_stays_there(angle: float, upper: float) -> None:
+    nodes, speeds = [0.0, 50.0, 100.0], [upper, 1490.0, 1510.0]
+    for sign in (1.0, -1.0):
+        end = rays.trace_ray(nodes, speeds, 50.0, sign * angle, 2.0)
+        assert end.depth == pytest.approx(50.0, abs=1e-5)
+        assert end.across == pytest.approx(sign * 2980.0, rel=1e-9)
+
+
+def test_level_ray_on_a_ridge_of_speed_leaves_it() -> None:
+    end = rays.trace_ray(
+        [0.0, 50.0, 100.0], [1490.0, 1510.0, 1490.0], 50.0, [89.99999, 90.00001], 0.3
+    )
+    assert end.depth[0] > 50.1
+    assert end.depth[1] < 49.9
+    down = rays.trace_ray([0.0, 50.0, 100.0], [1490.0, 1490.0, 1480.0], 50.0, 90.0, 0.3)
+    assert down.depth > 50.1
+
+
 def test_trapped_ray_keeps_to_its_channel() -> None:
     nodes, speeds = [0.0, 50.0, 100.0], [1510.0, 1490.0, 1510.0]
     end = rays.trace_ray(nodes, speeds, 50.0, 85.0, np.linspace(0.1, 5.0, 50))

@@ -194,7 +194,9 @@ def test_terms_that_are_not_given_are_zero() -> None:
     for sigma in [*terms.along.values(), *terms.across.values()]:
         assert sigma == 0.0
     assert uncertainty.vertical_terms(Z, BETA, C, pitch_sigma=1.0)["pitch"] == 0.0
+    assert uncertainty.vertical_terms(Z, BETA, C, pitch=9.0)["pitch"] == 0.0
     assert uncertainty.horizontal_terms(Z, BETA, C, latency_sigma=1.0).along["timing"] == 0.0
+    assert uncertainty.horizontal_terms(Z, BETA, C, speed=3.0).along["timing"] == 0.0
     level = uncertainty.vertical_terms(Z, BETA, C, roll_sigma=1.0)["roll"]
     assert level == uncertainty.vertical_roll(Z, BETA, 1.0, 0.0)
 

@@ -112,6 +112,8 @@ def test_latitude_left_out_is_forty_five_degrees() -> None:
     assert water.depth_from_pressure(5000.0) == water.depth_from_pressure(5000.0, 45.0)
     assert water.pressure_from_depth(5000.0) == water.pressure_from_depth(5000.0, 45.0)
     assert water.sound_speed(4.0, 35.0, 4000.0) == water.sound_speed(4.0, 35.0, 4000.0, 45.0)
+    choice = water.choose_sound_speed(4.0, 35.0, 4000.0)
+    assert choice.sound_speed == water.sound_speed(4.0, 35.0, 4000.0, 45.0)
 
 
 def test_fresh_pressure_is_the_weight_of_the_water() -> None:
