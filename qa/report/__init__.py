@@ -1,1 +1,9 @@
 """Findings as tables, figures and HTML."""
+
+from __future__ import annotations
+
+from qa.report.conclusions import summary
+from qa.report.lines import LineArtifacts, write_line
+from qa.report.outputs import write_outputs
+
+__all__ = ["LineArtifacts", "summary", "write_line", "write_outputs"]

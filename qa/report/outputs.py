@@ -1,0 +1,74 @@
+"""All files of an audit, written into one folder."""
+
+from __future__ import annotations
+
+import json
+import shutil
+from collections.abc import Iterable, Sequence
+from pathlib import Path
+from typing import Literal
+
+from qa.model.findings import Findings
+from qa.model.log import RejectedRow
+from qa.report import ping_table, tables
+from qa.report.lines import LineArtifacts
+from qa.report.pages import Report
+
+Pages = Literal["auto", "one", "many"]
+PARTS = ("figures", "pings")
+
+
+def write_outputs(
+    findings: Findings,
+    artifacts: Sequence[LineArtifacts],
+    rejected: Iterable[RejectedRow],
+    folder: Path,
+    pages: Pages = "auto",
+) -> Path:
+    """Write the report and the files beside it.
+
+    Parameters
+    ----------
+    findings : Findings
+        What the audit found.
+    artifacts : sequence of LineArtifacts
+        What :func:`qa.report.lines.write_line` returned, of every line that could be computed.
+    rejected : iterable of RejectedRow
+        Rows that could not be used.
+    folder : Path
+        Where to; the lines' own parts lie in it, and are gone afterwards.
+    pages : "auto", "one" or "many"
+        Whether lines stand in the report or on pages of their own; by their number if "auto".
+
+    Returns
+    -------
+    Path
+        The report.
+    """
+    folder = Path(folder)
+    artifacts = sorted(artifacts, key=lambda a: a.number)
+    data = findings.to_dict()
+    _write(
+        folder / "findings.json",
+        json.dumps(data, indent=1, ensure_ascii=False, allow_nan=False) + "\n",
+    )
+    tables.write_sections(findings, folder / "sections.csv")
+    tables.write_rejected(rejected, folder / "rejected.csv")
+    places = {key: along for a in artifacts for key, along in a.places.items()}
+    tables.write_rerun(findings, places, folder / "rerun.geojson")
+    ping_table.join_parts([a.pings for a in artifacts], folder / "pings.parquet")
+    report = Report(findings, artifacts, pages, data)
+    path = folder / "report.html"
+    _write(path, report.index())
+    if report.many:
+        (folder / "lines").mkdir(exist_ok=True)
+        for n in range(len(findings.lines)):
+            _write(folder / "lines" / f"{n + 1:04d}.html", report.line(n))
+    for part in PARTS:
+        shutil.rmtree(folder / part, ignore_errors=True)
+    return path
+
+
+def _write(path: Path, text: str) -> None:
+    # Names of files may hold bytes that are no text; what cannot be written is replaced, never lost with the file.
+    path.write_bytes(text.encode("utf-8", "replace"))
