@@ -7,7 +7,7 @@
     const cell = row.cells[column];
     if (cell.dataset.sort !== undefined) return Number(cell.dataset.sort);
     const datum = cell.querySelector("data");
-    const raw = datum ? datum.value : cell.textContent.trim();
+    const raw = datum && datum.hasAttribute("value") ? datum.value : (datum || cell).textContent.trim();
     if (raw === "" || raw === "–") return null;
     const number = Number(raw);
     return Number.isNaN(number) ? raw.toLowerCase() : number;

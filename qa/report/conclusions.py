@@ -321,7 +321,7 @@ def _extent(
     start, end = numbers.parsed_time(first.start), numbers.parsed_time(last.end)
     if start is None or end is None:
         return None, None
-    duration = max((end - start).total_seconds(), max((s.duration or 0.0 for s in sections)))
+    duration = max((end - start).total_seconds(), max(s.duration or 0.0 for s in sections))
     timed = [s for s in sections if s.duration and s.length is not None]
     if not timed:
         return duration, None

@@ -49,6 +49,18 @@ class Marker:
         text = numbers.quantity(value, unit) if kind == "quantity" else _KINDS[kind](value)
         return _datum(pointer, value, text)
 
+    def within(self, base: str, key: str, kind: str = "count", unit: str = "") -> Markup:
+        """One number of a row that names the row's own pointer in ``data-base``: shorter, for long tables."""
+        value = self.look_up(f"{base}/{key}")
+        text = numbers.quantity(value, unit) if kind == "quantity" else _KINDS[kind](value)
+        return _datum(key, value, text)
+
+    def pair_within(self, base: str, unit: str) -> tuple[Markup, Markup]:
+        """A section's worst value and its limit, in such a row."""
+        worst, limit = self.look_up(f"{base}/worst"), self.look_up(f"{base}/limit")
+        shown = numbers.against(worst, limit, unit)
+        return _datum("worst", worst, shown[0]), _datum("limit", limit, shown[1])
+
     def local(self, pointer: str, zone: str) -> Markup:
         """A time, shown in a time zone."""
         value = self.look_up(pointer)
@@ -67,7 +79,10 @@ def derived(name: str, value: Any, text: str) -> Markup:
 
 
 def _datum(pointer: str, value: Any, text: str) -> Markup:
-    return Markup('<data data-at="{}" value="{}">{}</data>').format(pointer, _raw(value), text)
+    raw, at = _raw(value), escape(pointer)
+    if raw == text:
+        return Markup(f'<data data-at="{at}">{escape(text)}</data>')
+    return Markup(f'<data data-at="{at}" value="{escape(raw)}">{escape(text)}</data>')
 
 
 def _raw(value: Any) -> str:
@@ -95,10 +110,19 @@ _CLASSES = {"in spec": "in", "out of spec": "out", "not assessed": "none", "advi
 
 def verdict(kind: str, key: str = "") -> Markup:
     """A verdict by shape, colour and word; ``key`` chooses another word for it."""
-    shape = Markup(_SHAPES[kind])
+    shown, text = _CLASSES[kind], escape(word(f"verdict.{key or kind}"))
     return Markup(
-        '<span class="verdict {}"><svg viewBox="0 0 12 12" aria-hidden="true">{}</svg>{}</span>'
-    ).format(_CLASSES[kind], shape, word(f"verdict.{key or kind}"))
+        f'<span class="verdict {shown}"><svg aria-hidden="true"><use href="#v-{shown}"/></svg>{text}</span>'
+    )
+
+
+def shapes() -> Markup:
+    """The verdicts' shapes, once a page."""
+    symbols = "".join(
+        f'<symbol id="v-{_CLASSES[kind]}" viewBox="0 0 12 12">{shape}</symbol>'
+        for kind, shape in _SHAPES.items()
+    )
+    return Markup(symbols)
 
 
 def script_json(value: Any) -> Markup:

@@ -108,6 +108,8 @@ def length(metres: float | None) -> str:
     """
     if metres is None:
         return UNKNOWN
+    if metres == 0:
+        return "0 m"
     if metres < 10:
         return f"{metres:.1f} m"
     if metres < 9995:
@@ -126,7 +128,7 @@ def duration(seconds: float | None) -> str:
     if seconds is None:
         return UNKNOWN
     if 0 < seconds < 1:
-        return "1 s"
+        return "< 1 s"
     whole = round(seconds)
     if whole < 60:
         return f"{whole} s"
@@ -167,7 +169,7 @@ def margin(part: float | None) -> str:
     if part == 0:
         return "0 %"
     if -0.001 < part < 0.001:
-        return f"< +0.1 %" if part > 0 else f"> {MINUS}0.1 %"
+        return "< +0.1 %" if part > 0 else f"> {MINUS}0.1 %"
     percent = 100 * part
     if math.isinf(percent):
         return "+∞" if percent > 0 else MINUS + "∞"

@@ -23,7 +23,9 @@ from qa.report.marking import Marker
 from qa.report.words import marked, word
 
 MOST_LINES_ON_ONE_PAGE = 20
-MOST_SECTIONS_ON_INDEX = 1000
+MOST_SECTIONS_ON_INDEX = 700
+MOST_ROWS_IN_FULL = 120
+"""With more rows than this, the operator's list gives the settings of each line's worst cause only."""
 FIRST_ROWS = 6
 FIRST_CAUSES = 3
 LINES_NAMED = 12
@@ -152,6 +154,7 @@ class Report:
             day=self.findings.survey.get("day"),
             operator=found.operator_list,
             by_line=len(found.operator_list) != len(found.stretches),
+            full_rows=len(found.operator_list) <= MOST_ROWS_IN_FULL,
             first_rows=found.by_line[:FIRST_ROWS],
             more_rows=max(0, len(found.by_line) - FIRST_ROWS),
             causes=found.causes[:FIRST_CAUSES],
@@ -186,6 +189,8 @@ class Report:
             "n": self.marker.number,
             "local": self.marker.local,
             "pair": self.marker.pair,
+            "within": self.marker.within,
+            "pair_within": self.marker.pair_within,
             "views": self.views,
             "titles": self.conclusions.titles,
             "home": home,
@@ -243,7 +248,7 @@ class Report:
                 for n, a in enumerate(self.artifacts)
                 if a is not None and a.track is not None and a.track.geographic == geographic
             ]
-            title = word("map.title") if geographic else word("map.grid")
+            title = word("map.caption") if geographic else word("map.grid")
             figure = tracks.chart(own, "map" if geographic else "map-grid", title)
             if figure is not None:
                 made.append(_prepared(figure))
@@ -339,5 +344,6 @@ def hatches() -> Markup:
     return Markup(
         '<svg class="defs" width="0" height="0" aria-hidden="true"><defs>'
         + "".join(from_here)
+        + str(marking.shapes())
         + "</defs></svg>"
     )

@@ -177,12 +177,6 @@ def _rule_value(result: LineResult, rule: str) -> Floats | None:
 
 def _resolution(result: LineResult) -> Panel | None:
     rules = ("range-resolution", "across-resolution", "along-resolution", "footprint-growth")
-    target = None
-    for rule in rules:
-        series = result.rules.get(rule)
-        if series is not None and np.isfinite(series.limit).any():
-            target = series.limit
-            break
     curves = _made(
         (rule_title(rules[0]), _column_or(result, "range_resolution", rules[0], "value"), "value"),
         (rule_title(rules[1]), _rule_value(result, rules[1]), "second"),
@@ -191,8 +185,25 @@ def _resolution(result: LineResult) -> Panel | None:
     )
     if not curves:
         return None
-    curves += _made((word("panel.target"), target, "limit"))
+    curves += _limits(result, rules)
     return Panel("resolution", word("panel.resolution"), "m", curves, rules)
+
+
+def _limits(result: LineResult, rules: Sequence[str]) -> tuple[Series, ...]:
+    """The rules' limits, once where they agree."""
+    distinct: list[tuple[str, Floats]] = []
+    for rule in rules:
+        series = result.rules.get(rule)
+        if series is None or not np.isfinite(series.limit).any():
+            continue
+        if not any(np.array_equal(series.limit, other, equal_nan=True) for _, other in distinct):
+            distinct.append((rule, series.limit))
+    if len(distinct) == 1:
+        return (Series(word("panel.limit"), distinct[0][1], "limit"),)
+    return tuple(
+        Series(word("panel.limit_of", name=rule_title(rule)), limit, "limit")
+        for rule, limit in distinct
+    )
 
 
 def _spacing(result: LineResult) -> Panel | None:
@@ -383,10 +394,9 @@ def track_time(result: LineResult, identity: str) -> dict[str, Any] | None:
     if changed:
         _change_row(sheet, changed, x, top)
         top += ROW
-    mark_top = 18.0
     for tick, label in axis.marks():
         place = float(axis.scale(tick))
-        sheet.line(place, mark_top, place, top, "grid")
+        sheet.line(place, top - 4, place, top, "edge")
         sheet.text(place, top + 15, label, "tick", "middle")
     day = numbers.iso(axis.first)[:10]
     sheet.text(0.5 * (LEFT + right), top + 31, word("panel.time", day=day), "axis", "middle")
@@ -457,6 +467,9 @@ def _panel(
             sheet.text(LEFT - 6, y + 4, drawing.tick_label(10.0**power), "tick", "end")
     else:
         drawing.value_axis(sheet, scale, LEFT, right)
+    for tick, _ in axis.marks():
+        place = float(axis.scale(tick))
+        sheet.line(place, top, place, top + HEIGHT, "grid")
     sheet.line(LEFT, top, LEFT, top + HEIGHT, "edge")
     ends: list[tuple[float, str, str]] = []
     told: list[str] = []

@@ -102,17 +102,23 @@ def section_grid(result: LineResult) -> dict[str, tuple[float, float, float, flo
     pair = _positions(result)
     if pair is None or pair[2]:
         return {}
+    easting, northing, _ = pair
     found = {}
     for section in result.sections:
         rows = section_rows(result, section)
         if rows is None:
             continue
         at = np.arange(rows[0], rows[1] + 1)
-        at = at[np.isfinite(pair[0][at]) & np.isfinite(pair[1][at])]
+        at = at[np.isfinite(easting[at]) & np.isfinite(northing[at])]
         if len(at):
             a, b = int(at[0]), int(at[-1])
-            found[section.id] = tuple(float(pair[n][i]) for i in (a, b) for n in (0, 1))
-    return found  # type: ignore[return-value]  # always four numbers
+            found[section.id] = (
+                float(easting[a]),
+                float(northing[a]),
+                float(easting[b]),
+                float(northing[b]),
+            )
+    return found
 
 
 def chart(
@@ -178,7 +184,9 @@ def chart(
     for level in (CLEAR, UNKNOWN, ADVISED, OUT):
         sheet.curve("".join(bunches[level]), f"track {STATES[level]}")
     for px0, py0, name in names:
-        sheet.text(px0 + 4, py0 - 4, name, "track-name", most=24)
+        near_edge = px0 > left + frame_width - 140
+        anchor = "end" if near_edge else "start"
+        sheet.text(px0 + (-4 if near_edge else 4), py0 - 4, name, "track-name", anchor, most=24)
     _legend(sheet, left + frame_width + 16, top, scale, counted)
     text = (
         word("map.told", n=len(tracks))
