@@ -103,6 +103,71 @@ def too_much_roll(channel: Channel, fault: Fault, rng: Random) -> None:
     channel.ping["roll"][_where(fault)] = np.where(phase == 0, 24.0, -24.0)
 
 
+def echoes_twice(channel: Channel, fault: Fault, rng: Random) -> None:
+    """Every third depth is the second echo: twice as far under the transducer."""
+    at = slice(fault.first, fault.last + 1, 3)
+    ping = channel.ping
+    ping["depth"][at] = 2 * ping["depth"][at] - ping["transducer_depth"][at]
+
+
+def sound_speed_off(channel: Channel, fault: Fault, rng: Random) -> None:
+    """Logged sound speed leaves what temperature and salinity say by 20 m/s."""
+    n = channel.ping["time"].size
+    # Mackenzie 1981 gives 1489.8 m/s at 10 degC and 35
+    channel.ping["temperature"] = np.full(n, 10.0)
+    channel.ping["salinity"] = np.full(n, 35.0)
+    channel.ping["sound_speed"] = np.full(n, 1490.0)
+    channel.ping["sound_speed"][_where(fault)] = 1510.0
+
+
+def refracted(channel: Channel, fault: Fault, rng: Random) -> None:
+    """A wrong sound speed profile: outer beams turn up as the square of the tangent."""
+    assert channel.beam is not None
+    beam = {name: values.copy() for name, values in channel.beam.items()}
+    rows = _where(fault)
+    tangent = np.tan(np.radians(beam["beam_angle"][rows]))
+    height = beam["depth"][rows] - channel.ping["transducer_depth"][rows][:, None]
+    beam["depth"][rows] = np.round(beam["depth"][rows] - 0.06 * height * tangent**2, 2)
+    channel.beam = beam
+
+
+def roll_left_in(channel: Channel, fault: Fault, rng: Random) -> None:
+    """The swath tilts with roll: motion was applied in part only."""
+    assert channel.beam is not None
+    beam = {name: values.copy() for name, values in channel.beam.items()}
+    rows = _where(fault)
+    tangent = np.tan(np.radians(beam["beam_angle"][rows]))
+    height = beam["depth"][rows] - channel.ping["transducer_depth"][rows][:, None]
+    tilt = np.tan(np.radians(0.6 * channel.ping["roll"][rows]))[:, None]
+    beam["depth"][rows] = np.round(beam["depth"][rows] + height * tangent * tilt, 2)
+    channel.beam = beam
+
+
+def turns_fast(channel: Channel, fault: Fault, rng: Random) -> None:
+    """Heading swings by 8 degrees from each ping to the next, to and fro."""
+    swing = np.where(np.arange(fault.last - fault.first + 1) % 2 == 0, 4.0, -4.0)
+    heading = channel.ping["heading"]
+    heading[_where(fault)] = np.round((heading[_where(fault)] + swing) % 360.0, 2)
+
+
+def _time_against_depth(rng: Random, drawn: Any, first: int, last: int) -> Fault:
+    """Depths are 8 % too small for the two-way times logged beside them."""
+
+    def after(channel: Channel, fault: Fault, rng: Random) -> None:
+        assert channel.beam is not None
+        beam = {name: values.copy() for name, values in channel.beam.items()}
+        angle = beam["beam_angle"]
+        if drawn.sonar.beam_angle_from == "array":
+            angle = angle - channel.ping["roll"][:, None]
+        height = beam["depth"] - channel.ping["transducer_depth"][:, None]
+        beam["two_way_time"] = np.round(2 * height / np.cos(np.radians(angle)) / 1490.0, 7)
+        rows = _where(fault)
+        beam["depth"][rows] = np.round(beam["depth"][rows] - 0.08 * height[rows], 2)
+        channel.beam = beam
+
+    return Fault("times and depths disagree", ("time-depth",), first, last, 2.0, after=after)
+
+
 def _range_window(rng: Random, drawn: Any, first: int, last: int) -> Fault:
     height = drawn.seabed.depth - drawn.sonar.transducer_depth
     reach = height / math.cos(
@@ -160,6 +225,18 @@ KINDS: tuple[Kind, ...] = (
         columns=("range_scale",),
         prepare=_range_window,
     ),
+    Kind("second echoes", ("multiple-echo",), ("single-beam",), echoes_twice),
+    Kind(
+        "sound speed and water disagree",
+        ("sound-speed",),
+        ALL,
+        sound_speed_off,
+        ("temperature", "salinity", "sound_speed"),
+    ),
+    Kind("refraction", ("swath-curl",), ("multibeam",), refracted, seconds=4.0),
+    Kind("roll left in", ("swath-wobble",), ("multibeam",), roll_left_in, ("roll",), 20.0),
+    Kind("the vessel turns fast", ("yaw-gap",), ("multibeam",), turns_fast, ("heading",)),
+    Kind("times and depths disagree", ("time-depth",), ("multibeam",), prepare=_time_against_depth),
     Kind(
         "pulse too short", ("pulse-cycles",), ALL, columns=("pulse_length",), prepare=_short_pulse
     ),
@@ -194,5 +271,7 @@ def add(rng: Random, drawn: Any, allowed: set[str] | None = None) -> None:
     drawn.logged |= set(kind.columns) - {"ping", "latitude"}
     if "ping" in kind.columns:
         drawn.ping_numbers = True
-    if kind.rules[0] == "depth-spike":
+    if kind.rules[0] in ("depth-spike", "swath-curl", "swath-wobble"):
         drawn.beams_as = "depth"
+    if kind.rules[0] == "time-depth":
+        drawn.beams_as = "both"

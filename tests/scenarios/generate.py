@@ -269,6 +269,9 @@ def draw(rng: Random, number: int, kind: str, clean: bool) -> Draw:
         )
         if not multibeam:
             width_across = width_along
+        # enough beams to leave no ground between them, and not so many that the logs grow heavy
+        width_across = max(width_across, round(2 * half_fan / (0.75 * 220), 2))
+        beams = max(24, math.ceil(2 * half_fan / (0.75 * width_across)))
         two = multibeam and rng.random() < 0.2
         form = "FM" if rng.random() < 0.2 else "CW"
         reach = height / math.cos(math.radians(outer)) * 1.1
@@ -279,7 +282,7 @@ def draw(rng: Random, number: int, kind: str, clean: bool) -> Draw:
         lowered = multibeam and rng.random() < 0.15
         sonar = Sonar(
             kind=kind,
-            beams=int(rng.choice([24, 48])),
+            beams=beams if multibeam else 1,
             pulse_length=float(rng.choice([40e-6, 100e-6, 200e-6])) if form == "CW" else 2e-3,
             pulse_form=form,
             bandwidth=float(rng.choice([10e3, 30e3])) if form == "FM" else None,
@@ -515,7 +518,12 @@ def csv_dialect(rng: Random, drawn: Draw, run: Simulated, names: list[str]) -> D
     order = list(names)
     if run.sonar.kind == "multibeam":
         columns.append(Column(str(rng.choice(["beam", "Beam No"])), "beam"))
-        order += ["beam_angle", drawn.beams_as, "accepted"]
+        both = drawn.beams_as == "both"
+        order += [
+            "beam_angle",
+            *(["depth", "two_way_time"] if both else [drawn.beams_as]),
+            "accepted",
+        ]
     for name in order:
         options = HEADINGS[name]
         heading, unit, digits = options[int(rng.integers(0, len(options)))]
@@ -540,7 +548,7 @@ def prepare(drawn: Draw, run: Simulated) -> None:
             beam = dict(channel.beam)
             height = beam["depth"] - head[:, None]
             beam["depth"] = np.round(beam["depth"] - shift[:, None], 2)
-            if drawn.beams_as != "depth":
+            if drawn.beams_as in ("slant_range", "two_way_time"):
                 angle = beam["beam_angle"]
                 if run.sonar.beam_angle_from == "array":
                     angle = angle - ping["roll"][:, None]
@@ -564,10 +572,11 @@ def write(
         )
         if layout == "wide" and (drawn.beams_as != "depth" or not drawn.ping_numbers):
             layout = "long"
+        # text of so many beams takes long to write, and shows nothing more
+        if layout == "csv" and run.sonar.beams * run.line.pings > 40_000:
+            layout = "long"
     else:
         layout = str(rng.choice(["long", "csv", "csv", "csv"]))
-    if layout in ("csv", "wide") and drawn.extra:
-        layout = "csv"
     if layout == "csv":
         dialect = csv_dialect(rng, drawn, run, names)
         file = f"{name}.csv"
