@@ -81,9 +81,9 @@ def write_line(result: LineResult, folder: Path, number: int) -> LineArtifacts:
     figures = folder / "figures" / f"{number:04d}.json"
     figures.parent.mkdir(parents=True, exist_ok=True)
     kept = [f for f in drawn if f is not None]
-    figures.write_text(
-        json.dumps(kept, ensure_ascii=False, separators=(",", ":")), encoding="utf-8", newline="\n"
-    )
+    # A file's name may hold bytes that are no text; they are replaced, here as in the report.
+    text = json.dumps(kept, ensure_ascii=False, separators=(",", ":"))
+    figures.write_bytes(text.encode("utf-8", "replace"))
     pings = folder / "pings" / f"{number:04d}.arrow"
     ping_table.write_part(result, pings)
     return LineArtifacts(

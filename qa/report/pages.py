@@ -23,7 +23,7 @@ from qa.report.marking import Marker
 from qa.report.words import marked, word
 
 MOST_LINES_ON_ONE_PAGE = 20
-MOST_SECTIONS_ON_INDEX = 700
+MOST_SECTIONS_ON_INDEX = 500
 MOST_ROWS_IN_FULL = 120
 """With more rows than this, the operator's list gives the settings of each line's worst cause only."""
 FIRST_ROWS = 6

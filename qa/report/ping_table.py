@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from qa.model.columns import PULSE_FORMS
 from qa.model.findings import LineResult
+from qa.report.drawing import clean
 
 STATUS_WORDS = ("not assessed", "met", "missed", "exempt")
 _STATUS = pa.dictionary(pa.int8(), pa.string())
@@ -76,7 +77,7 @@ _TIME = pa.timestamp("ns", tz="UTC")
 
 def _dictionary(codes: NDArray[Any], words: Sequence[str], kind: pa.DictionaryType) -> pa.Array:
     return pa.DictionaryArray.from_arrays(
-        pa.array(codes, kind.index_type), pa.array(list(words), pa.string())
+        pa.array(codes, kind.index_type), pa.array([clean(w) for w in words], pa.string())
     )
 
 

@@ -125,7 +125,7 @@ def chart(
     tracks: Sequence[tuple[str, Track]],
     identity: str,
     title: str,
-    most_points: int = 20_000,
+    most_points: int = 12_000,
 ) -> dict[str, Any] | None:
     """The map of tracks by name: a local equirectangular projection, a scale bar and north."""
     if not tracks:
