@@ -67,6 +67,8 @@ def _column(channel: Channel, setup: Setup, name: str) -> Array:
 def _speed_from_fixes(channel: Channel) -> Array:
     """Speed between fixes at least 10 s apart, held in between. [m/s]"""
     time = channel.ping["time"] / 1e9
+    if "latitude" not in channel.ping:
+        return np.full(time.size, math.nan)
     latitude, longitude = channel.ping["latitude"], channel.ping["longitude"]
     # the radii of curvature of WGS 84, close enough over a line's length
     north = np.radians(latitude) * 6367000.0
@@ -75,6 +77,8 @@ def _speed_from_fixes(channel: Channel) -> Array:
     for i in range(1, time.size):
         if time[i] - time[marks[-1]] >= 10:
             marks.append(i)
+    if len(marks) == 1:
+        return np.full(time.size, math.nan)
     marks[-1] = time.size - 1
     out = np.zeros(time.size)
     for a, b in itertools.pairwise(marks):

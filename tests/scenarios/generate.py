@@ -389,11 +389,7 @@ def part_of(rng: Random, drawn: Draw, file: str) -> dict[str, Any]:
         required["footprint_limit"] = f"{limits.footprint_limit:g} m"
     # a setting that nobody logged nor stated: what needs it must read "not assessed"
     if not drawn.faults and not drawn.extra and rng.random() < 0.3:
-        gone = str(
-            rng.choice(
-                ["pulse_length", "beamwidth_along", "target_size", "hits_required", "near_range"]
-            )
-        )
+        gone = str(rng.choice(["pulse_length", "beamwidth_along", "target_size", "near_range"]))
         removed = stated.pop(gone, None) is not None
         removed |= required.pop(gone, None) is not None
         if removed:
