@@ -313,6 +313,16 @@ def _figures(artifact: LineArtifacts | None) -> list[dict[str, Any]]:
     return [_prepared(figure) for figure in drawn]
 
 
+def render(template: str, **context: Any) -> str:
+    """A page from its template."""
+    return _environment().get_template(template).render(context)
+
+
+def prepared(figure: dict[str, Any] | None) -> dict[str, Any] | None:
+    """A figure for the templates, if there is one."""
+    return None if figure is None else _prepared(figure)
+
+
 def _prepared(figure: dict[str, Any]) -> dict[str, Any]:
     """A figure for the templates: its drawing was escaped when it was made."""
     data = {key: figure[key] for key in ("kind", "origin_ms", "data") if key in figure}

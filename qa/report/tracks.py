@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -126,6 +126,7 @@ def chart(
     identity: str,
     title: str,
     most_points: int = 12_000,
+    words: str = "map",
 ) -> dict[str, Any] | None:
     """The map of tracks by name: a local equirectangular projection, a scale bar and north."""
     if not tracks:
@@ -187,11 +188,15 @@ def chart(
         near_edge = px0 > left + frame_width - 140
         anchor = "end" if near_edge else "start"
         sheet.text(px0 + (-4 if near_edge else 4), py0 - 4, name, "track-name", anchor, most=24)
-    _legend(sheet, left + frame_width + 16, top, scale, counted)
+    _legend(sheet, left + frame_width + 16, top, scale, words)
     text = (
-        word("map.told", n=len(tracks))
+        word(f"{words}.told", n=len(tracks))
         + " "
-        + " ".join(word(f"map.{state}", n=many) for state, many in counted.items() if many)
+        + " ".join(
+            word(f"{words}.{state}{'_state' if state == 'none' else ''}", n=many)
+            for state, many in counted.items()
+            if many
+        )
     )
     return {
         "id": identity,
@@ -277,9 +282,9 @@ def _degree(angle: float, names: str) -> str:
     return f"{abs(round(angle, 6)):g}° {names[0] if angle >= 0 else names[1]}"
 
 
-def _legend(sheet: Drawing, x: float, top: float, scale: float, counted: Mapping[str, int]) -> None:
+def _legend(sheet: Drawing, x: float, top: float, scale: float, words: str) -> None:
     sheet.curve(f"M{x + 12:g} {top + 30:g}v-24m-6 9l6 -10l6 10", "north")
-    sheet.text(x + 24, top + 20, word("map.north"), "label")
+    sheet.text(x + 24, top + 20, word(f"{words}.north"), "label")
     wanted = 110.0 / scale
     power = 10.0 ** math.floor(math.log10(wanted))
     bar = next(m * power for m in (5, 2, 1) if m * power <= wanted)
@@ -290,5 +295,5 @@ def _legend(sheet: Drawing, x: float, top: float, scale: float, counted: Mapping
     y += 48
     for state in ("out", "advice", "clear", "none"):
         sheet.curve(f"M{x:g} {y:g}h30", f"track {state}")
-        sheet.text(x + 38, y + 4, word(f"map.legend_{state}"), "label", most=24)
+        sheet.text(x + 38, y + 4, word(f"{words}.legend_{state}"), "label", most=24)
         y += 20
