@@ -50,6 +50,11 @@ NO_EFFECT: dict[tuple[str, str, str], str] = {
     ("rays", "np.where(down[:, np.newaxis] > 0.0", "0.0"): "a direction is 1 or -1",
     ("rays", "goal = np.where(d > 0.0", "0.0"): "a direction is 1 or -1",
     ("rays", "heading_down = d[cross] > 0.0", "0.0"): "a direction is 1 or -1",
+    ("rays", "side = np.clip(", "0"): "the outermost layers have no outer edge to start from",
+    ("rays", "side = np.clip(", "1"): "the outermost layers have no outer edge to start from",
+    ("rays", "start = np.where(d > 0.0", "0.0"): "a direction is 1 or -1",
+    ("rays", "stays = (k < 1e-6)", "1e-6"): "where level begins",
+    ("rays", "stays = (k < 1e-6)", "0.0"): "stays level in even water either way",
     ("rays", "2.0 * c * t + 1.0", "2.0"): "any way too long for the time",
     ("rays", "2.0 * c * t + 1.0", "1.0"): "any way too long for the time",
     ("rays", "np.minimum(sine_at_edge[cross], 1.0)", "1.0"): "guards against rounding",
@@ -59,6 +64,32 @@ NO_EFFECT: dict[tuple[str, str, str], str] = {
     ("water", "pressure = 1.01 * depth", "1.01"): "where the iteration begins",
     ("water", "for _ in range(12)", "12"): "one pass more",
     ("water", "pressure + 1.02 *", "1.02"): "pace of the iteration",
+}
+
+# Sums that only carry NaN along, and products with 1 or -1: an operator turned round in them
+# cannot show. (part of the line) -> reason.
+CARRIES_NAN = "only carries NaN along"
+OPERATOR_NO_EFFECT: dict[str, str] = {
+    "footprint + 0.0 * beamwidth_across": CARRIES_NAN,
+    "pulse_limited_nadir(height, range_resolution) + 0.0 * one_side": CARRIES_NAN,
+    "sharp) + 0.0 * limit": CARRIES_NAN,
+    "near_normal) + 0.0 * (normal + oblique)": CARRIES_NAN,
+    "_decibels(ratio + 0.0 * (detection + false_alarm))": CARRIES_NAN,
+    "known = np.isfinite(": CARRIES_NAN,
+    "usable = np.isfinite(": CARRIES_NAN,
+    "np.isnan(hits + needed + chance)": CARRIES_NAN,
+    "unknown = np.isnan(depth)": CARRIES_NAN,
+    "unknown = ~np.isfinite(": CARRIES_NAN,
+    "unknown |= np.isnan(": CARRIES_NAN,
+    "known = ~np.isnan(t + s + d + latitude)": CARRIES_NAN,
+    "size + 0.0 * depth": CARRIES_NAN,
+    "np.arctan2(sine, cosine * down)) * side": "times 1 or -1",
+    "across=(across * side)": "times 1 or -1",
+    "behind = -d * gradients": "times 1 or -1",
+    "g = d * gradients[place]": "times 1 or -1",
+    "way = d * (goal - z)": "times 1 or -1",
+    "across=np.where(possible, side * across": "times 1 or -1",
+    "angle=np.where(possible, side * final": "times 1 or -1",
 }
 
 SWAPPED = {ast.Add: "-", ast.Sub: "+", ast.Mult: "/", ast.Div: "*"}
@@ -81,6 +112,10 @@ class Change:
         for (module, part, number), reason in NO_EFFECT.items():
             if module == self.module and part in self.text and number == self.before:
                 return reason
+        if self.before.strip(" ()") in ("+", "-", "*", "/"):
+            for part, reason in OPERATOR_NO_EFFECT.items():
+                if part in self.text:
+                    return reason
         return None
 
 

@@ -268,6 +268,8 @@ def test_range_just_inside_the_longest_is_found_and_beyond_it_is_not() -> None:
     for root, found in ((19800.0, 19800.0), (20100.0, np.inf)):
         got = echoes.greatest_range(lambda r, root=root: root - r)
         assert got == pytest.approx(found)
+        from_ten = echoes.greatest_range(lambda r, root=root: root - r, 10.0)
+        assert from_ten == pytest.approx(found)
 
 
 def side_scan_of_the_handbooks_day(target_strength: float, range_scale: float) -> float:

@@ -22,7 +22,7 @@ def nodes_of(speeds: list[float]) -> list[float]:
 
 
 @given(
-    st.floats(1400.0, 1600.0), st.floats(-85.0, 85.0), st.floats(1e-4, 0.5), st.floats(0.0, 20.0)
+    st.floats(1400.0, 1600.0), st.floats(-85.0, 85.0), st.floats(1e-4, 5.0), st.floats(0.0, 20.0)
 )
 def test_ray_in_constant_sound_speed_is_straight(
     c: float, angle: float, time: float, start: float
@@ -211,6 +211,21 @@ def test_level_ray_on_the_axis_of_a_channel_stays_there(angle: float, upper: flo
         end = rays.trace_ray(nodes, speeds, 50.0, sign * angle, 2.0)
         assert end.depth == pytest.approx(50.0, abs=1e-5)
         assert end.across == pytest.approx(sign * 2980.0, rel=1e-9)
+
+
+def test_axis_is_told_by_the_water_on_both_of_its_sides() -> None:
+    nodes, speeds = [0.0, 20.0, 50.0, 100.0, 150.0], [1480.0, 1500.0, 1490.0, 1510.0, 1530.0]
+    for angle in (90.0, 90.00001):
+        end = rays.trace_ray(nodes, speeds, 50.0, angle, 2.0)
+        assert end.depth == pytest.approx(50.0, abs=1e-5)
+
+
+def test_level_ray_in_water_that_grows_faster_downwards_bends_up() -> None:
+    across, depth, _ = integrated([0.0, 50.0, 100.0], [1480.0, 1490.0, 1510.0], 50.0, 90.0, 0.3)
+    end = rays.trace_ray([0.0, 50.0, 100.0], [1480.0, 1490.0, 1510.0], 50.0, 90.0, 0.3)
+    assert end.depth == pytest.approx(depth, abs=1e-3)
+    assert end.across == pytest.approx(across, abs=1e-3)
+    assert end.turned
 
 
 def test_level_ray_on_a_ridge_of_speed_leaves_it() -> None:
