@@ -99,6 +99,12 @@
       data[0].v.forEach((_, n) => rows.push(data.map((one) => one.v[n])));
       return rows;
     }
+    if (figure.kind === "map") {
+      const rows = [["line", "longitude_or_easting", "latitude_or_northing", "state"]];
+      const states = ["not assessed", "no section", "advisory", "out of spec"];
+      for (const one of data) one.v.forEach((v, n) => rows.push([one.series, one.x[n], one.y[n], states[v]]));
+      return rows;
+    }
     const rows = [["panel", "series", "unit", "time_utc", "value"]];
     for (const one of data) {
       one.t.forEach((t, n) => {

@@ -200,7 +200,6 @@ def growth(points: Sequence[GrowthPoints], identity: str, title: str) -> Figure 
     low, high = (numbers.quantity(float(v), "m") for v in (footprint.min(), footprint.max()))
     shallow, deep = (numbers.quantity(float(v), "m") for v in (depth.min(), depth.max()))
     sentences = [word("growth.told", low=low, high=high, shallow=shallow, deep=deep)]
-    crossing = None
     if has_limit:
         order = np.argsort(depth, kind="stable")
         line = limit[order]
@@ -217,17 +216,24 @@ def growth(points: Sequence[GrowthPoints], identity: str, title: str) -> Figure 
             "label limit",
             most=27,
         )
-        crossing = float(depth[over].min()) if over.any() else None
+        crossing, fitted = _crossing(depth, footprint, limit)
         if crossing is not None:
-            place = float(x_scale(crossing))
-            told = word("growth.crossing", depth=numbers.quantity(crossing, "m", 3))
-            sheet.line(place, top, place, top + height, "curve crossing")
-            far = place > 0.7 * right
-            sheet.text(
-                place + (-6 if far else 6), top + 12, told, "label", "end" if far else "start"
+            shown = numbers.quantity(crossing, "m", 3)
+            told = (
+                word("growth.fitted", depth=shown)
+                if fitted
+                else word("growth.crossing", depth=shown)
             )
             sentences.append(told + ".")
-        else:
+            place = float(x_scale(crossing))
+            if left <= place <= right:
+                sheet.line(place, top, place, top + height, "curve crossing")
+                far = place > 0.6 * right
+                at, anchor = (place - 6, "end") if far else (place + 6, "start")
+                sheet.text(at, top + 12, told, "label", anchor)
+            else:
+                sheet.text(right - 6, top + 12, told, "label", "end")
+        if not over.any():
             sentences.append(word("growth.under"))
     text = " ".join(sentences)
     data = [
@@ -243,6 +249,25 @@ def growth(points: Sequence[GrowthPoints], identity: str, title: str) -> Figure 
         "svg": sheet.svg(identity, title, text),
         "data": data,
     }
+
+
+def _crossing(depth: Floats, footprint: Floats, limit: Floats) -> tuple[float | None, bool]:
+    """Depth at which the footprint reaches its limit, and whether a straight line through the points says so.
+
+    The footprint of one set-up grows with depth in a straight line. Where the points do not lie on one, or show too
+    little of it, the depth is that of the shallowest point over its limit.
+    """
+    known = limit[np.isfinite(limit)]
+    if len(depth) >= 8 and np.ptp(known) == 0 and np.ptp(depth) > 0.1 * float(np.mean(depth)):
+        slope, start = np.polyfit(depth, footprint, 1)
+        off = footprint - (start + slope * depth)
+        if slope > 0 and float(np.sqrt(np.mean(off**2))) < 0.02 * float(np.mean(footprint)):
+            found = (float(known[0]) - start) / slope
+            # A straight line says little far from its points.
+            if 0 < found < 2 * float(depth.max()):
+                return float(found), True
+    over = np.isfinite(limit) & (footprint > limit)
+    return (float(depth[over].min()), False) if over.any() else (None, False)
 
 
 def _bounds(values: Floats) -> tuple[float, float]:

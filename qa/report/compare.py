@@ -441,7 +441,8 @@ def _chart(result: Comparison) -> dict[str, Any] | None:
         for m in result.matched
         if len(m.x)
     ]
-    return pages.prepared(tracks.chart(drawn, "compare-map", word("compare.map"), words="compare"))
+    figure = tracks.chart(drawn, "compare-map", word("compare.map"), words="compare")
+    return pages.prepared({**figure, "data": []} if figure else None)
 
 
 def summary(result: Comparison) -> str:

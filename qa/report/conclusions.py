@@ -36,8 +36,8 @@ class Stretch:
     length: float | None
     causes: tuple[str, ...]
     settings: tuple[tuple[str, str], ...]
-    start_place: str
-    end_place: str
+    start_place: tuple[str, ...]
+    end_place: tuple[str, ...]
     first_section: int
     last_section: int
     stretches: int = 1
@@ -194,14 +194,15 @@ class Conclusions:
             stretches=count,
         )
 
-    def _place(self, section: Section, side: int) -> str:
+    def _place(self, section: Section, side: int) -> tuple[str, ...]:
         latitude = section.start_latitude if side == 0 else section.end_latitude
         longitude = section.start_longitude if side == 0 else section.end_longitude
         if latitude is not None and longitude is not None:
             return numbers.position(latitude, longitude)
         if section.id in self.grid:
-            return numbers.grid(*self.grid[section.id][side : side + 2])
-        return ""
+            easting, northing = self.grid[section.id][side : side + 2]
+            return numbers.grid(easting, northing)
+        return ()
 
     @cached_property
     def total_length(self) -> float | None:
@@ -257,6 +258,11 @@ class Conclusions:
         return sorted(
             found, key=lambda u: (not u.everywhere, u.rule.severity != "out of spec", u.index)
         )
+
+    @cached_property
+    def partly(self) -> list[RuleFinding]:
+        """Rules that were assessed, but not on every ping."""
+        return [r for r in self.findings.rules if r.pings_assessed and r.pings_not_assessed]
 
     @cached_property
     def advice(self) -> list[int]:

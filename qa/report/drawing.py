@@ -195,6 +195,18 @@ def path(x: Floats, y: Floats) -> str:
     return "".join(parts)
 
 
+def broken(x: Floats, y: Floats, piece: Indices) -> tuple[Floats, Floats]:
+    """Points with an unknown one put in wherever a new piece begins.
+
+    Examples
+    --------
+    >>> broken(np.array([0.0, 1.0]), np.array([5.0, 6.0]), np.array([0, 1]))[1].tolist()
+    [5.0, nan, 6.0]
+    """
+    at = np.flatnonzero(np.diff(piece)) + 1
+    return np.insert(x, at, np.nan), np.insert(y, at, np.nan)
+
+
 _GLYPHS = (
     "m-2 -2h4v4h-4z",
     "m0 -2.6l2.6 4.6h-5.2z",
@@ -291,7 +303,7 @@ def _short(value: float) -> str:
     return f"{round(float(value), 1):g}"
 
 
-def value_axis(drawing: Drawing, scale: Scale, left: float, right: float, wanted: int = 3) -> None:
+def value_axis(drawing: Drawing, scale: Scale, left: float, right: float, wanted: int = 4) -> None:
     """Ticks of a vertical axis, with a faint line across."""
     for tick in ticks(scale.least, scale.greatest, wanted):
         y = float(scale(tick))

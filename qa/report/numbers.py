@@ -110,6 +110,8 @@ def length(metres: float | None) -> str:
         return UNKNOWN
     if metres == 0:
         return "0 m"
+    if metres < 0:
+        return MINUS + length(-metres)
     if metres < 10:
         return f"{metres:.1f} m"
     if metres < 9995:
@@ -161,8 +163,8 @@ def margin(part: float | None) -> str:
 
     Examples
     --------
-    >>> margin(0.25), margin(-0.031), margin(-1e-6)
-    ('+25 %', '−3.1 %', '> −0.1 %')
+    >>> margin(0.25), margin(-0.031), margin(-1e-6), margin(-74499.0)
+    ('+25 %', '−3.1 %', '> −0.1 %', '< −999 %')
     """
     if part is None or math.isnan(part):
         return UNKNOWN
@@ -171,23 +173,22 @@ def margin(part: float | None) -> str:
     if -0.001 < part < 0.001:
         return "< +0.1 %" if part > 0 else f"> {MINUS}0.1 %"
     percent = 100 * part
-    if math.isinf(percent):
-        return "+∞" if percent > 0 else MINUS + "∞"
+    if abs(percent) > 999:
+        return "> +999 %" if percent > 0 else f"< {MINUS}999 %"
     body = f"{abs(percent):.1f}" if abs(percent) < 10 else f"{abs(percent):,.0f}".replace(",", THIN)
     return ("+" if percent > 0 else MINUS) + body.removesuffix(".0") + " %"
 
 
-def position(latitude: float | None, longitude: float | None) -> str:
+def position(latitude: float, longitude: float) -> tuple[str, str]:
     """A position in degrees and decimal minutes, as plotters take it.
 
     Examples
     --------
     >>> position(54.5, -3.25001)
-    '54°30.0000′N 003°15.0006′W'
+    ('54°30.0000′N', '003°15.0006′W')
     """
-    if latitude is None or longitude is None:
-        return UNKNOWN
-    return f"{_minutes(latitude, 2, 'NS')} {_minutes(longitude, 3, 'EW')}"
+    longitude = (longitude + 180.0) % 360.0 - 180.0
+    return _minutes(latitude, 2, "NS"), _minutes(longitude, 3, "EW")
 
 
 def _minutes(angle: float, digits: int, names: str) -> str:
@@ -196,17 +197,15 @@ def _minutes(angle: float, digits: int, names: str) -> str:
     return f"{degrees:0{digits}d}°{rest / 10_000:07.4f}′{names[0] if angle >= 0 else names[1]}"
 
 
-def grid(easting: float | None, northing: float | None) -> str:
+def grid(easting: float, northing: float) -> tuple[str, str]:
     """A position on a grid.
 
     Examples
     --------
     >>> grid(412345.678, 6012345.0)
-    '412345.7 E 6012345.0 N'
+    ('412345.7 E', '6012345.0 N')
     """
-    if easting is None or northing is None:
-        return UNKNOWN
-    return f"{easting:.1f} E {northing:.1f} N"
+    return f"{easting:.1f} E", f"{northing:.1f} N"
 
 
 def moment(text: str | None, zone: str = "UTC") -> str:

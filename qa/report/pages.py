@@ -20,6 +20,7 @@ from qa.report import charts, drawing, marking, numbers, tracks
 from qa.report.conclusions import Conclusions, fails
 from qa.report.lines import LineArtifacts, line_identity
 from qa.report.marking import Marker
+from qa.report.panels import rule_title
 from qa.report.words import marked, word
 
 MOST_LINES_ON_ONE_PAGE = 20
@@ -46,6 +47,7 @@ def _environment() -> Environment:
         name=marking.name,
         verdict=marking.verdict,
         derived=marking.derived,
+        short=rule_title,
         length=numbers.length,
         duration=numbers.duration,
         count=numbers.count,

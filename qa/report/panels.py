@@ -98,8 +98,9 @@ def changes(result: LineResult) -> list[Change]:
                         "panel.change", name=quantity_title(name), before=before, after=after
                     )
                     found.append(Change(start + int(rows[at + 1]), text))
-    found.sort(key=lambda c: (c.row, c.text))
-    return found
+    # Two sides that change together are one change.
+    once = {(int(result.time[c.row]), c.text): c for c in reversed(found)}
+    return [once[key] for key in sorted(once)]
 
 
 def panels(result: LineResult) -> list[Panel]:
@@ -473,6 +474,7 @@ def _panel(
     sheet.line(LEFT, top, LEFT, top + HEIGHT, "edge")
     ends: list[tuple[float, str, str]] = []
     told: list[str] = []
+    pieces = _pieces(result)
     for series in panel.series:
         commands, marks, columns = [], [], []
         for _, start, stop in result.channels:
@@ -480,7 +482,7 @@ def _panel(
             kept = drawing.without_repeats(part, drawing.extremes(part))
             xs = x[start:stop][kept]
             ys = _heights(part[kept], scale, factor, logarithmic)
-            commands.append(drawing.path(xs, ys))
+            commands.append(drawing.path(*drawing.broken(xs, ys, pieces[start:stop][kept])))
             if len(part) <= 40:
                 marks.append(drawing.dots(xs, ys))
             columns.append((start + kept, part[kept]))
@@ -518,6 +520,16 @@ def _panel(
     misses = sum(r.pings_missed for r in result.finding.rules if r.id in own)
     tail = word("panel.misses", n=misses) if own and misses else ""
     sentences.append(f"{panel.title}: " + "; ".join(told) + "." + (f" {tail}" if tail else ""))
+
+
+def _pieces(result: LineResult) -> np.ndarray[Any, np.dtype[np.int64]]:
+    """A number for each ping that grows where the log stops for long: no curve is drawn across that, shape (pings,)."""
+    number = np.zeros(len(result.time), dtype=np.int64)
+    for _, start, stop in result.channels:
+        steps = np.abs(np.diff(result.time[start:stop]))
+        if len(steps):
+            number[start + 1 : stop] = np.cumsum(steps > 8 * max(float(np.median(steps)), 1e6))
+    return number
 
 
 def _unassessed(sheet: Drawing, result: LineResult, panel: Panel, x: Floats, top: float) -> None:
@@ -560,16 +572,18 @@ def _end_labels(sheet: Drawing, ends: list[tuple[float, str, str]], x: float, to
     if overflow > 0:
         places = [p - overflow for p in places]
     for (_, name, role), y in zip(ends, places, strict=True):
-        sheet.text(x, y + 4, name, f"label {role}", most=27)
+        sheet.line(x, y, x + 14, y, f"curve {role}")
+        sheet.text(x + 19, y + 4, name, f"label {role}", most=25)
 
 
 def _strip_rows(result: LineResult, patterns: dict[str, int]) -> list[tuple[str, str]]:
     rows = []
+    own = {(s.rule, s.channel) for s in result.sections}
     for rule, series in result.rules.items():
         for channel, start, stop in result.channels:
             status = series.status[start:stop]
             partly = (status == NOT_ASSESSED).any() and (status != NOT_ASSESSED).any()
-            if rule in patterns or (status == MISSED).any() or partly:
+            if (rule, channel) in own or (status == MISSED).any() or partly:
                 rows.append((rule, channel))
     rows.sort(key=lambda r: r[0] not in patterns)
     return rows[:MOST_ROWS]
@@ -592,7 +606,12 @@ def _strip(
         sheet.box(
             a, top + 3, b - a, ROW - 6, "strip none", word("verdict.not assessed"), UNASSESSED
         )
-    for a, b in _mask_spans(result, status == MISSED, x, channel):
+    single = status == MISSED
+    for section in result.sections:
+        rows = section_rows(result, section)
+        if rows is not None and section.rule == rule:
+            single[rows[0] : rows[1] + 1] = False
+    for a, b in _mask_spans(result, single, x, channel):
         sheet.box(a, top + 6, b - a, ROW - 12, "strip stray")
     if rule in patterns:
         for severity in ("advisory", "out of spec"):

@@ -18,6 +18,7 @@ from qa.report.panels import section_rows
 from qa.report.words import word
 
 MOST_POINTS = 400
+NAME_ON_MAP = 24
 UNKNOWN, CLEAR, ADVISED, OUT = 0, 1, 2, 3
 STATES = ("none", "clear", "advice", "out")
 EARTH = 6_371_008.8
@@ -181,13 +182,10 @@ def chart(
         for level in (CLEAR, UNKNOWN, ADVISED, OUT):
             bunches[level].append(_stretches(px, py, state, level))
         if len(tracks) <= 40:
-            names.append((float(px[0]), float(py[0]), name))
+            names.append((name, [(float(px[k]), float(py[k])) for k in (0, -1)]))
     for level in (CLEAR, UNKNOWN, ADVISED, OUT):
         sheet.curve("".join(bunches[level]), f"track {STATES[level]}")
-    for px0, py0, name in names:
-        near_edge = px0 > left + frame_width - 140
-        anchor = "end" if near_edge else "start"
-        sheet.text(px0 + (-4 if near_edge else 4), py0 - 4, name, "track-name", anchor, most=24)
+    _names(sheet, names, (left, top, left + frame_width, top + frame_height))
     _legend(sheet, left + frame_width + 16, top, scale, words)
     text = (
         word(f"{words}.told", n=len(tracks))
@@ -204,8 +202,53 @@ def chart(
         "title": title,
         "text": text,
         "svg": sheet.svg(identity, title, text),
-        "data": [],
+        "data": _points(tracks) if len(tracks) <= 40 else [],
     }
+
+
+def _points(tracks: Sequence[tuple[str, Track]]) -> list[dict[str, Any]]:
+    """The tracks as drawn, thinner still, as figures' data."""
+    data = []
+    for name, one in tracks:
+        rows, state = _thinned(one.state, 100)
+        x, y = (np.round(v[rows], 7).tolist() for v in (one.x, one.y))
+        data.append({"series": drawing.clean(name), "x": x, "y": y, "v": state.tolist()})
+    return data
+
+
+def _names(
+    sheet: Drawing,
+    names: Sequence[tuple[str, Places]],
+    frame: tuple[float, float, float, float],
+) -> None:
+    """Each track's name beside one of its ends, where there is room; the rest are in the table of lines."""
+    taken: list[tuple[float, float, float, float]] = []
+    for name, ends in names:
+        shown = name if len(name) <= NAME_ON_MAP else name[: NAME_ON_MAP - 1] + "…"
+        wide = 6.2 * len(shown) + 4
+        for x, y in ends:
+            placed = False
+            for side, drop in ((1, -4), (-1, -4), (1, 11), (-1, 11)):
+                x0 = x + 4 if side > 0 else x - 4 - wide
+                box = (x0, y + drop - 9, x0 + wide, y + drop + 2)
+                inside = (
+                    box[0] >= frame[0]
+                    and box[2] <= frame[2]
+                    and box[1] >= frame[1]
+                    and box[3] <= frame[3]
+                )
+                clear = all(
+                    box[2] <= t[0] or t[2] <= box[0] or box[3] <= t[1] or t[3] <= box[1]
+                    for t in taken
+                )
+                if inside and clear:
+                    taken.append(box)
+                    anchor = "start" if side > 0 else "end"
+                    sheet.text(x + 4 * side, y + drop, name, "track-name", anchor, most=NAME_ON_MAP)
+                    placed = True
+                    break
+            if placed:
+                break
 
 
 def _unwrapped(longitude: Floats) -> Floats:
@@ -265,7 +308,7 @@ def _graticule(
         sheet.text(
             x,
             top + height + 16,
-            _degree(tick, "EW") if geographic else f"{tick:.0f}",
+            _degree(tick, "EW") if geographic else f"{tick:.0f}".replace("-", "−"),
             "tick",
             "middle",
         )
@@ -273,7 +316,11 @@ def _graticule(
         y = float(y_axis(tick))
         sheet.line(left, y, left + width, y, "grid")
         sheet.text(
-            left - 5, y + 4, _degree(tick, "NS") if geographic else f"{tick:.0f}", "tick", "end"
+            left - 5,
+            y + 4,
+            _degree(tick, "NS") if geographic else f"{tick:.0f}".replace("-", "−"),
+            "tick",
+            "end",
         )
 
 

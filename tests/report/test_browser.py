@@ -121,7 +121,7 @@ def test_lines_on_their_own_pages(browser: Any, audit_pages: Any) -> None:
 
 def test_figure_data_comes_as_csv(browser: Any, audit: Any, tmp_path: Path) -> None:
     with opened(browser, audit.folder / "report.html") as page:
-        for kind in ("panels", "margins", "growth", "swath"):
+        for kind in ("panels", "margins", "growth", "swath", "map"):
             button = page.locator(f"figure.kind-{kind} button.csv").first
             with page.expect_download() as download:
                 button.click()
