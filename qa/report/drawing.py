@@ -207,6 +207,19 @@ def broken(x: Floats, y: Floats, piece: Indices) -> tuple[Floats, Floats]:
     return np.insert(x, at, np.nan), np.insert(y, at, np.nan)
 
 
+def edges(piece: Indices, most: int = 200) -> Indices:
+    """Rows on both sides of where a new piece begins.
+
+    Examples
+    --------
+    >>> edges(np.array([0, 0, 1, 1])).tolist()
+    [1, 2]
+    """
+    at = np.flatnonzero(np.diff(piece))
+    at = at[:: len(at) // most + 1]
+    return np.union1d(at, at + 1).astype(np.int64)
+
+
 _GLYPHS = (
     "m-2 -2h4v4h-4z",
     "m0 -2.6l2.6 4.6h-5.2z",

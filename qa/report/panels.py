@@ -480,6 +480,7 @@ def _panel(
         for _, start, stop in result.channels:
             part = series.values[start:stop]
             kept = drawing.without_repeats(part, drawing.extremes(part))
+            kept = np.union1d(kept, drawing.edges(pieces[start:stop]))
             xs = x[start:stop][kept]
             ys = _heights(part[kept], scale, factor, logarithmic)
             commands.append(drawing.path(*drawing.broken(xs, ys, pieces[start:stop][kept])))
@@ -572,7 +573,7 @@ def _end_labels(sheet: Drawing, ends: list[tuple[float, str, str]], x: float, to
     if overflow > 0:
         places = [p - overflow for p in places]
     for (_, name, role), y in zip(ends, places, strict=True):
-        sheet.line(x, y, x + 14, y, f"curve {role}")
+        sheet.line(x, y, x + 14, y, f"curve {role} swatch")
         sheet.text(x + 19, y + 4, name, f"label {role}", most=25)
 
 
