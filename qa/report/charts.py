@@ -201,20 +201,22 @@ def growth(points: Sequence[GrowthPoints], identity: str, title: str) -> Figure 
     shallow, deep = (numbers.quantity(float(v), "m") for v in (depth.min(), depth.max()))
     sentences = [word("growth.told", low=low, high=high, shallow=shallow, deep=deep)]
     if has_limit:
-        order = np.argsort(depth, kind="stable")
-        line = limit[order]
-        sheet.curve(
-            drawing.path(x_scale(depth[order]).astype(float), y_scale(line).astype(float))
-            if np.unique(line[np.isfinite(line)]).size > 1
-            else f"M{left:g} {float(y_scale(np.nanmax(line))):.1f}H{right:g}",
-            "curve limit",
-        )
+        for one in points:
+            known = np.isfinite(one.limit)
+            if known.any():
+                # From edge to edge where it is one number for all: it holds at every depth, not only at those met.
+                same = np.unique(limit[np.isfinite(limit)]).size == 1
+                over_depths = (
+                    np.array([x_scale.least, x_scale.greatest]) if same else one.depth[known]
+                )
+                at = np.full(2, one.limit[known][0]) if same else one.limit[known]
+                xs, ys = np.asarray(x_scale(over_depths), float), np.asarray(y_scale(at), float)
+                sheet.curve(drawing.path(xs, ys), "curve limit")
+                if same:
+                    break
+        deepest = int(np.nanargmax(np.where(np.isfinite(limit), depth, -np.inf)))
         sheet.text(
-            right + 6,
-            float(y_scale(line[np.isfinite(line)][-1])) + 4,
-            word("growth.limit"),
-            "label limit",
-            most=27,
+            right + 6, float(y_scale(limit[deepest])) + 4, word("growth.limit"), "label limit"
         )
         crossing, fitted = _crossing(depth, footprint, limit)
         if crossing is not None:
@@ -229,8 +231,8 @@ def growth(points: Sequence[GrowthPoints], identity: str, title: str) -> Figure 
             if left <= place <= right:
                 sheet.line(place, top, place, top + height, "curve crossing")
                 far = place > 0.6 * right
-                at, anchor = (place - 6, "end") if far else (place + 6, "start")
-                sheet.text(at, top + 12, told, "label", anchor)
+                side, anchor = (-6, "end") if far else (6, "start")
+                sheet.text(place + side, top + 12, told, "label", anchor)
             else:
                 sheet.text(right - 6, top + 12, told, "label", "end")
         if not over.any():

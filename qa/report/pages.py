@@ -14,7 +14,7 @@ from typing import Any
 from jinja2 import Environment, FileSystemLoader, StrictUndefined
 from markupsafe import Markup
 
-from qa.model.findings import Findings, Section
+from qa.model.findings import ORIGINS, Findings, Section
 from qa.model.shipped import shipped
 from qa.report import charts, drawing, marking, numbers, tracks
 from qa.report.conclusions import Conclusions, fails
@@ -238,6 +238,7 @@ class Report:
             "line": line,
             "id": line_identity(index + 1),
             "figures": _figures(artifact),
+            "origins": _by_origin(line.origins),
             "sections": [v for v in views if v.section.severity == "out of spec"],
             "advice": [v for v in views if v.section.severity != "out of spec"],
         }
@@ -272,6 +273,14 @@ class Report:
             charts.margins(ordered, "all-margins", word("figures.survey_margins")),
         ]
         return [_prepared(f) for f in made if f is not None]
+
+
+def _by_origin(origins: Mapping[str, str]) -> list[tuple[str, list[str]]]:
+    """Quantities by where they came from, the best origin first."""
+    found: dict[str, list[str]] = {origin: [] for origin in ORIGINS}
+    for quantity, origin in sorted(origins.items()):
+        found.setdefault(origin, []).append(quantity)
+    return [(origin, names) for origin, names in found.items() if names]
 
 
 def _thinned(points: Sequence[charts.GrowthPoints], most: int = 4000) -> list[charts.GrowthPoints]:

@@ -185,6 +185,22 @@ def test_axe_finds_nothing_serious(
         assert told == [], json.dumps(told, indent=1)
 
 
+def test_the_comparison_opens_silently_fits_and_is_accessible(
+    browser: Any, axe: str, audit: Any, write: Any, made: Any, tmp_path: Path
+) -> None:
+    from qa.report.compare import compare_audits
+
+    compare_audits(
+        audit.folder, write((made.LineKind("AGAIN"), made.LineKind("TWICE"))).folder, tmp_path
+    )
+    for width in (1280, 390):
+        with opened(browser, tmp_path / "compare.html", width) as page:
+            assert page.evaluate("document.documentElement.scrollWidth") <= width
+            page.evaluate(axe)
+            found = page.evaluate("axe.run()")["violations"]
+            assert [v["id"] for v in found if v["impact"] in ("serious", "critical")] == []
+
+
 def pdf_pages(path: Path) -> list[tuple[str, bool]]:
     """Each page's text, and whether it lies on its side."""
     text = subprocess.run(
