@@ -45,6 +45,9 @@
     });
   }
 
+  // As the table shows a long title: cut after 59 characters.
+  const shownName = (text) => (text.length > 60 ? text.slice(0, 59) + "…" : text);
+
   for (const tools of all(".tools")) {
     const table = document.getElementById(tools.dataset.for);
     const rows = Array.from(table.tBodies[0].rows);
@@ -76,6 +79,14 @@
       told.textContent = told.dataset.text.replace("{shown}", shown).replace("{total}", rows.length);
     };
     search.addEventListener("input", apply);
+    for (const link of all(`a[data-filter="${tools.dataset.for.replace("table-", "")}"]`)) {
+      link.addEventListener("click", () => {
+        const name = Array.from(choice.options, (option) => option.value).find((value) => value === shownName(link.dataset.rule));
+        choice.value = name ?? "";
+        search.value = "";
+        apply();
+      });
+    }
     tools.hidden = false;
     apply();
   }

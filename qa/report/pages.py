@@ -183,6 +183,10 @@ class Report:
         context = self._common("../report.html")
         line_name = drawing.clean(self.findings.lines[index].line)[:160]
         context.update(block=self._block(index), block_name=line_name)
+        context.update(
+            previous=f"{index:04d}.html" if index else "",
+            following=f"{index + 2:04d}.html" if index + 1 < len(self.findings.lines) else "",
+        )
         return _environment().get_template("line.html.jinja").render(context)
 
     def _common(self, home: str) -> dict[str, Any]:

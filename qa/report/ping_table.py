@@ -5,7 +5,8 @@ A line's part is an Arrow file, which costs little to write and to read again; i
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -21,16 +22,34 @@ from qa.report.drawing import clean
 STATUS_WORDS = ("not assessed", "met", "missed", "exempt")
 _STATUS = pa.dictionary(pa.int8(), pa.string())
 _TEXT = pa.dictionary(pa.int32(), pa.string())
-ROWS = 131_072
+_TIME = pa.timestamp("ns", tz="UTC")
+_EPOCH = "nanoseconds since 1970-01-01"
+ROWS = 65_536
 
 
 def write_part(result: LineResult, path: Path) -> None:
-    """Write one line's pings."""
-    columns, fields = [], []
+    """Write one line's pings, some at a time, so that a long line needs no second copy of itself."""
+    fields: list[pa.Field] = []
+    makers: list[Callable[[slice], pa.Array]] = []
 
-    def add(name: str, values: Any, kind: pa.DataType, unit: str = "") -> None:
-        columns.append(values)
+    def add(
+        name: str, kind: pa.DataType, make: Callable[[slice], pa.Array], unit: str = ""
+    ) -> None:
         fields.append(pa.field(name, kind, metadata={"units": unit} if unit else None))
+        makers.append(make)
+
+    def add_words(name: str, codes: NDArray[Any], words: Sequence[str], kind: pa.DataType) -> None:
+        held = pa.array([clean(w) for w in words], pa.string())
+        add(
+            name,
+            kind,
+            lambda rows: pa.DictionaryArray.from_arrays(
+                pa.array(codes[rows], kind.index_type), held
+            ),
+        )
+
+    def add_numbers(name: str, values: NDArray[Any], unit: str) -> None:
+        add(name, pa.float64(), lambda rows: _numbers(values[rows]), unit)
 
     n = len(result.time)
     channel = np.zeros(n, dtype=np.int32)
@@ -38,47 +57,42 @@ def write_part(result: LineResult, path: Path) -> None:
     for number, (_, start, stop) in enumerate(result.channels):
         channel[start:stop] = number
         index[start:stop] = np.arange(stop - start)
-    names = [name for name, _, _ in result.channels] or [""]
-    add("line", _dictionary(np.zeros(n, dtype=np.int32), [result.finding.line], _TEXT), _TEXT)
-    add("channel", _dictionary(channel, names, _TEXT), _TEXT)
-    add("ping", pa.array(result.ping, pa.int64()), pa.int64())
-    add("index", pa.array(index, pa.int64()), pa.int64())
-    add(
-        "time", pa.array(result.time, pa.int64()).cast(_TIME), _TIME, "nanoseconds since 1970-01-01"
-    )
+    add_words("line", np.zeros(n, dtype=np.int32), [result.finding.line], _TEXT)
+    add_words("channel", channel, [name for name, _, _ in result.channels] or [""], _TEXT)
+    add("ping", pa.int64(), lambda rows: pa.array(result.ping[rows], pa.int64()))
+    add("index", pa.int64(), lambda rows: pa.array(index[rows], pa.int64()))
+    add("time", _TIME, lambda rows: pa.array(result.time[rows], pa.int64()).cast(_TIME), _EPOCH)
     for name in sorted(result.columns):
         values = result.columns[name]
         if name == "pulse_form":
-            code = np.where(np.isfinite(values), values, 0).astype(np.int8)
-            form = pa.DictionaryArray.from_arrays(
-                pa.array(code, mask=~np.isfinite(values)), pa.array(PULSE_FORMS)
-            )
-            add(name, form, _STATUS)
+            add(name, _STATUS, partial(_forms, values))
         else:
-            add(name, _numbers(values), pa.float64(), result.units.get(name, "1"))
+            add_numbers(name, values, result.units.get(name, "1"))
     for rule in sorted(result.rules):
         series = result.rules[rule]
-        add(f"{rule}: verdict", _dictionary(series.status, STATUS_WORDS, _STATUS), _STATUS)
+        add_words(f"{rule}: verdict", series.status, STATUS_WORDS, _STATUS)
         for side, values in (("value", series.value), ("limit", series.limit)):
             if np.isfinite(values).any():
-                add(f"{rule}: {side}", _numbers(values), pa.float64(), series.unit)
-    table = pa.Table.from_arrays(columns, schema=pa.schema(fields))
+                add_numbers(f"{rule}: {side}", values, series.unit)
+    schema = pa.schema(fields)
     path.parent.mkdir(parents=True, exist_ok=True)
     options = pa.ipc.IpcWriteOptions(compression="lz4")
     with (
         pa.OSFile(str(path), "wb") as sink,
-        pa.ipc.new_file(sink, table.schema, options=options) as writer,
+        pa.ipc.new_file(sink, schema, options=options) as writer,
     ):
-        writer.write_table(table, max_chunksize=ROWS)
+        for start in range(0, n, ROWS):
+            rows = slice(start, start + ROWS)
+            writer.write_batch(
+                pa.RecordBatch.from_arrays([make(rows) for make in makers], schema=schema)
+            )
 
 
-_TIME = pa.timestamp("ns", tz="UTC")
-
-
-def _dictionary(codes: NDArray[Any], words: Sequence[str], kind: pa.DictionaryType) -> pa.Array:
-    return pa.DictionaryArray.from_arrays(
-        pa.array(codes, kind.index_type), pa.array([clean(w) for w in words], pa.string())
-    )
+def _forms(values: NDArray[Any], rows: slice) -> pa.Array:
+    part = values[rows]
+    known = np.isfinite(part)
+    codes = pa.array(np.where(known, part, 0).astype(np.int8), mask=~known)
+    return pa.DictionaryArray.from_arrays(codes, pa.array(PULSE_FORMS))
 
 
 def _numbers(values: NDArray[Any]) -> pa.Array:
@@ -129,7 +143,7 @@ def _joint_schema(parts: Sequence[Path]) -> pa.Schema:
     first = [pa.field("line", _TEXT), pa.field("channel", _TEXT), pa.field("ping", pa.int64())]
     first += [
         pa.field("index", pa.int64()),
-        pa.field("time", _TIME, metadata={"units": "nanoseconds since 1970-01-01"}),
+        pa.field("time", _TIME, metadata={"units": _EPOCH}),
     ]
     fixed = {f.name for f in first}
     quantities: dict[str, pa.Field] = {}

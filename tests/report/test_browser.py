@@ -94,6 +94,15 @@ def test_sections_filter_by_text_and_by_rule(browser: Any, audit: Any) -> None:
         assert len(column(page, 1)) == 4
 
 
+def test_a_clause_leads_to_its_own_sections(browser: Any, write: Any, made: Any) -> None:
+    faults = tuple(made.Fault("ping-interval", 10 + 20 * n, 20 + 20 * n) for n in range(5))
+    kinds = (made.LineKind("A", faults=(*faults, made.Fault("range-resolution", 5, 9))),)
+    with opened(browser, write(kinds).folder / "report.html") as page:
+        assert len(column(page, 1)) == 6
+        page.get_by_role("link", name="5 sections").click()
+        assert column(page, 2) == ["Ping interval against listening time"] * 5
+
+
 def test_a_section_leads_to_its_numbers_and_its_figure(browser: Any, audit: Any) -> None:
     with opened(browser, audit.folder / "report.html") as page:
         page.locator("#table-sections tbody a").first.click()
