@@ -16,6 +16,9 @@ TOGETHER = 60.0
 ROWS_OF_A_PAGE = 14
 """With more stretches than this, the list for the operator takes each line as one."""
 
+_DENSITIES = (("normal", 95, 48), ("dense", 112, 56))
+"""How many characters of settings a printed line of the operator's list holds, and how many lines a page."""
+
 Grid = tuple[float, float, float, float]
 
 
@@ -132,6 +135,20 @@ class Conclusions:
     def operator_list(self) -> list[Stretch]:
         """What fits on a page."""
         return self.stretches if len(self.stretches) <= ROWS_OF_A_PAGE else self.by_line
+
+    @property
+    def density(self) -> str:
+        """How tightly the operator's list must be printed to fit a page: "normal", "dense" or "worst causes only"."""
+        for name, characters, most in _DENSITIES:
+            lines = 0
+            for row in self.operator_list:
+                told = sum(
+                    1 + (len(rule) + len(remedy)) // characters for rule, remedy in row.settings
+                )
+                lines += max(3, told)
+            if lines <= most:
+                return name
+        return "worst"
 
     def _failing_by_line(self) -> dict[str, list[int]]:
         grouped: dict[str, list[int]] = {}

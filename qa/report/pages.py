@@ -25,8 +25,6 @@ from qa.report.words import marked, word
 
 MOST_LINES_ON_ONE_PAGE = 20
 MOST_SECTIONS_ON_INDEX = 500
-MOST_ROWS_IN_FULL = 120
-"""With more rows than this, the operator's list gives the settings of each line's worst cause only."""
 FIRST_ROWS = 6
 FIRST_CAUSES = 3
 LINES_NAMED = 12
@@ -156,7 +154,7 @@ class Report:
             day=self.findings.survey.get("day"),
             operator=found.operator_list,
             by_line=len(found.operator_list) != len(found.stretches),
-            full_rows=len(found.operator_list) <= MOST_ROWS_IN_FULL,
+            density=found.density,
             first_rows=found.by_line[:FIRST_ROWS],
             more_rows=max(0, len(found.by_line) - FIRST_ROWS),
             causes=found.causes[:FIRST_CAUSES],

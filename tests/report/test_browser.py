@@ -276,6 +276,24 @@ def test_the_operators_list_prints_alone_on_one_page(
     assert all(f"LN{n:02d}_outer_roads" in kept[0] for n in range(14)) and "54°30" in kept[0]
 
 
+def test_many_causes_a_line_still_fit_the_operators_page(
+    browser: Any, write: Any, made: Any, tmp_path: Path
+) -> None:
+    rules = ("ping-interval", "range-resolution", "footprint-growth", "pings-on-target")
+    faults = tuple(made.Fault(r, 10 + 20 * n, 25 + 20 * n) for n, r in enumerate(rules))
+    remedy = "Keep to 4.25 kt over the ground or slower at this ping rate, or ping at 5.97 Hz or faster at this speed."
+    for lines in (8, 12, 16):
+        kinds = tuple(
+            made.LineKind(f"LN{n:02d}", pings=120, faults=faults, texts={"remedy": remedy})
+            for n in range(lines)
+        )
+        with opened(browser, write(kinds).folder / "report.html") as page:
+            page.evaluate("document.documentElement.dataset.print = 'rerun'")
+            kept = [text for text, _ in printed(page, tmp_path) if text.strip()]
+        assert len(kept) == 1, lines
+        assert kept[0].count("Keep to 4.25 kt") >= lines
+
+
 def test_a_thousand_lines_are_usable_within_two_seconds(
     browser: Any, made: Any, tmp_path: Path
 ) -> None:
