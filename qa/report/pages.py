@@ -123,16 +123,17 @@ class Report:
             line = self.conclusions.line_index.get(section.line)
             identity = line_identity(0 if line is None else line + 1)
             counted[identity] = counted.get(identity, 0) + 1
-            page = f"lines/{line + 1:04d}.html" if self.many and line is not None else ""
             views.append(
                 SectionView(
-                    n,
-                    f"/sections/{n}",
-                    section,
-                    f"{identity}-s{counted[identity]}",
-                    f"{identity}-time",
-                    page,
-                    fails(section),
+                    index=n,
+                    at=f"/sections/{n}",
+                    section=section,
+                    anchor=f"{identity}-s{counted[identity]}",
+                    figure=""
+                    if line is None or self.artifacts[line] is None
+                    else f"{identity}-time",
+                    page=f"lines/{line + 1:04d}.html" if self.many and line is not None else "",
+                    fails=fails(section),
                 )
             )
         return views
@@ -169,6 +170,8 @@ class Report:
                 ("sections", failing[:most], len(failing)),
                 ("advice", advised[:most], len(advised)),
             ],
+            # What concerns several lines together belongs to none of them.
+            of_survey=[v for v in self.views if v.section.line not in found.line_index],
             lines=self._line_rows(),
             blocks=[] if self.many else [self._block(n) for n in range(len(self.findings.lines))],
             survey_figures=self._survey_figures(),

@@ -348,6 +348,25 @@ def test_a_line_that_failed_and_a_file_not_used_stand_on_the_first_screen(
     assert "1 file could not be used:" in first and "1 line could not be computed:" in first
 
 
+def test_sections_of_no_single_line_have_their_place(made: Any, tmp_path: Path) -> None:
+    from dataclasses import replace
+
+    results = made.results_of((made.LineKind("A", faults=(made.Fault("ping-interval", 5, 9),)),))
+    findings = made.findings_of(results)
+    whole = replace(
+        findings.sections[0], id="survey.1", line="A and B", reason="Swaths do not meet."
+    )
+    changed = replace(findings, sections=(*findings.sections, whole))
+    path = tmp_path / "report.html"
+    path.write_text(Report(changed, [], "one", changed.to_dict()).index(), encoding="utf-8")
+    page = Page(path)
+    links = {
+        a["href"] for tag, a in page.elements if tag == "a" and a.get("href", "").startswith("#")
+    }
+    assert {link[1:] for link in links} <= set(page.ids)
+    assert "Sections of several lines together" in page.text and "Swaths do not meet." in page.text
+
+
 def test_a_thousand_lines_have_an_index_under_three_megabytes(made: Any, tmp_path: Path) -> None:
     """Every line fails by four rules: nearly the most that an index can hold. Artifacts of one line serve for all."""
     from dataclasses import replace
