@@ -71,7 +71,7 @@ def swath(result: LineResult, identity: str) -> Figure | None:
     sheet.text(
         0.5 * (LEFT + right), top + height + 31, word("panel.time", day=day), "axis", "middle"
     )
-    title = word("swath.title", line=result.finding.line)
+    title = word("swath.title", line=drawing.clipped(result.finding.line))
     text = " ".join(sentences)
     return {
         "id": identity,

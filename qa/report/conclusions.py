@@ -276,6 +276,11 @@ class Conclusions:
             found, key=lambda u: (not u.everywhere, u.rule.severity != "out of spec", u.index)
         )
 
+    @property
+    def lacking(self) -> bool:
+        """Whether a rule that counts was not assessed on some line."""
+        return any(u.rule.severity == "out of spec" for u in self.unassessed)
+
     @cached_property
     def partly(self) -> list[RuleFinding]:
         """Rules that were assessed, but not on every ping."""
@@ -310,12 +315,8 @@ class Conclusions:
                 extent.append(word("headline.time", time=numbers.duration(self.total_duration)))
             return f"{head} {word('headline.again', extent=', '.join(extent))}"
         if findings.verdict == "in spec":
-            nowhere = sum(
-                u.everywhere and u.rule.severity == "out of spec" for u in self.unassessed
-            )
-            partly = [u for u in self.unassessed if u.rule.severity == "out of spec"]
-            if nowhere or partly:
-                n = len(partly)
+            n = sum(u.rule.severity == "out of spec" for u in self.unassessed)
+            if n:
                 return word("headline.in_partly", n=n, lines=word("counted.lines", n=lines))
             return word("headline.in", n=lines)
         return word("headline.nothing")
@@ -324,6 +325,11 @@ class Conclusions:
 def fails(section: Section) -> bool:
     """Whether a section puts its line out of spec."""
     return section.severity == "out of spec" and not section.within_allowance
+
+
+def lacking(line: LineFinding) -> bool:
+    """Whether a rule that counts was not assessed on a line."""
+    return any(r.severity == "out of spec" and r.verdict == "not assessed" for r in line.rules)
 
 
 def _margin(section: Section) -> float:

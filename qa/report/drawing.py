@@ -35,6 +35,11 @@ def clean(text: str) -> str:
     )
 
 
+def clipped(text: str, most: int = 80) -> str:
+    """A name short enough for a title."""
+    return text if len(text) <= most else text[: most - 1] + "…"
+
+
 @dataclass(frozen=True, slots=True)
 class Scale:
     """A straight line from values to places on the drawing."""

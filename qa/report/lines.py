@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from qa.model.findings import LineResult
-from qa.report import charts, panels, ping_table, tracks
+from qa.report import charts, drawing, panels, ping_table, tracks
 from qa.report.charts import GrowthPoints
 from qa.report.tracks import Places, Track
 from qa.report.words import word
@@ -70,12 +70,13 @@ def write_line(result: LineResult, folder: Path, number: int) -> LineArtifacts:
     growth = charts.growth_points(result)
     counted = charts.margin_counts(result)
     name = result.finding.line
+    shown = drawing.clipped(name)
     drawn = [
         panels.track_time(result, f"{identity}-time"),
         charts.swath(result, f"{identity}-swath"),
-        charts.margins(counted, f"{identity}-margins", word("margins.title", line=name)),
+        charts.margins(counted, f"{identity}-margins", word("margins.title", line=shown)),
         charts.growth(
-            [growth] if growth else [], f"{identity}-growth", word("growth.title", line=name)
+            [growth] if growth else [], f"{identity}-growth", word("growth.title", line=shown)
         ),
     ]
     figures = folder / "figures" / f"{number:04d}.json"

@@ -17,7 +17,7 @@ from markupsafe import Markup
 from qa.model.findings import ORIGINS, Findings, Section
 from qa.model.shipped import shipped
 from qa.report import charts, drawing, marking, numbers, tracks
-from qa.report.conclusions import Conclusions, fails
+from qa.report.conclusions import Conclusions, fails, lacking
 from qa.report.lines import LineArtifacts, line_identity
 from qa.report.marking import Marker
 from qa.report.panels import rule_title
@@ -46,6 +46,7 @@ def _environment() -> Environment:
         verdict=marking.verdict,
         derived=marking.derived,
         short=rule_title,
+        lacking=lacking,
         length=numbers.length,
         duration=numbers.duration,
         count=numbers.count,

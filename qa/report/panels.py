@@ -403,7 +403,7 @@ def track_time(result: LineResult, identity: str) -> dict[str, Any] | None:
     sheet.text(0.5 * (LEFT + right), top + 31, word("panel.time", day=day), "axis", "middle")
     if axis.cut:
         sentences.append(word("panel.cut"))
-    title = word("panel.title", line=result.finding.line)
+    title = word("panel.title", line=drawing.clipped(result.finding.line))
     return {
         "id": identity,
         "kind": "panels",

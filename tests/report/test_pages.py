@@ -256,6 +256,7 @@ def test_all_pass_but_something_was_not_assessed_says_both(write: Any, made: Any
         in text
     )
     assert "Nothing to run again." in text and "No line has positions" in text
+    assert re.search(r"in spec where assessed\s+Nothing that could", text)
     assert "out of spec." not in text.split("Cautions")[0].replace("is out of spec.", "")
 
 
