@@ -17,7 +17,8 @@ ROOT = Path(__file__).resolve().parent.parent
 SAMPLE = ROOT / "sample_logs"
 
 GOOD_CSV = "Ping No,Time,Depth (m),Pulse Length (us)\n" + "".join(
-    f"{i},2026-05-04T10:00:{i // 5:02d}.{i % 5 * 200:03d}Z,{10 + 0.01 * i:.2f},100\n" for i in range(60)
+    f"{i},2026-05-04T10:00:{i // 5:02d}.{i % 5 * 200:03d}Z,{10 + 0.01 * i:.2f},100\n"
+    for i in range(60)
 )
 
 
@@ -88,8 +89,12 @@ def test_not_assessed_counts_only_when_asked(log: Path, tmp_path: Path) -> None:
 def test_same_input_gives_the_same_bytes(log: Path, tmp_path: Path) -> None:
     for name in ("a", "b"):
         pingworthy("audit", log, "--out", tmp_path / name, "--set", "target_size=0.05m")
-    files = sorted(p.relative_to(tmp_path / "a") for p in (tmp_path / "a").rglob("*") if p.is_file())
-    assert files == sorted(p.relative_to(tmp_path / "b") for p in (tmp_path / "b").rglob("*") if p.is_file())
+    files = sorted(
+        p.relative_to(tmp_path / "a") for p in (tmp_path / "a").rglob("*") if p.is_file()
+    )
+    assert files == sorted(
+        p.relative_to(tmp_path / "b") for p in (tmp_path / "b").rglob("*") if p.is_file()
+    )
     for name in files:
         assert (tmp_path / "a" / name).read_bytes() == (tmp_path / "b" / name).read_bytes(), name
 
@@ -160,7 +165,9 @@ def test_a_survey_file_with_a_mistake_is_refused(case: str, log: Path, tmp_path:
     refused(pingworthy("audit", log, "--survey", survey, "--out", tmp_path / "out"), *words)
 
 
-def test_a_bad_file_among_good_ones_is_named_and_the_rest_finished(log: Path, tmp_path: Path) -> None:
+def test_a_bad_file_among_good_ones_is_named_and_the_rest_finished(
+    log: Path, tmp_path: Path
+) -> None:
     bad = tmp_path / "bad.csv"
     bad.write_bytes(BAD_LOGS["prose.csv"])
     done = pingworthy("audit", log, bad, "--out", tmp_path / "out")
@@ -187,7 +194,10 @@ def test_demo_finds_the_planted_faults(tmp_path: Path) -> None:
             if s["line"] == fault["line"]
             and s["rule"] == fault["rule"]
             and (s["channel"] or None) == (fault["channel"] or None)
-            and all(abs(s[k] - fault[k]) <= 1 for k in ("first_index", "last_index", "first_ping", "last_ping"))
+            and all(
+                abs(s[k] - fault[k]) <= 1
+                for k in ("first_index", "last_index", "first_ping", "last_ping")
+            )
         ]
         assert match, f"not found: {fault}"
         unmatched.remove(match[0])
