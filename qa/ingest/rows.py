@@ -1,0 +1,324 @@
+"""Raw batches turned into canonical rows: values in SI, what is missing, what is rejected and why."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pyarrow as pa
+from numpy.typing import NDArray
+
+from qa.ingest.names import Binding
+from qa.ingest.probe import FileProbe
+from qa.ingest.table_source import TableSource
+from qa.ingest.text_source import RawBatch
+from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
+from qa.ingest.values import (
+    Converted,
+    NameCodes,
+    positions_of,
+    to_flag,
+    to_form,
+    to_number,
+    to_whole,
+)
+from qa.model.columns import COLUMNS
+from qa.model.log import KEPT_REJECTS, NO_TIME, FileAccount, RejectedRow
+
+Integers = NDArray[np.int64]
+WHOLE = ("ping", "beam")
+NAMES = ("line", "channel")
+
+
+@dataclass(slots=True)
+class Rows:
+    """Canonical rows of one batch, rejected ones taken out.
+
+    ``numbers`` are the rows' numbers in the file. ``beams`` holds the beam columns, ``counts`` how many of their
+    values each row owns: one each in a log whose rows are pings or beams. NaN, or -1 for ``ping``, is missing.
+    """
+
+    numbers: Integers
+    time: Integers
+    ping: Integers | None
+    line: Integers | None
+    channel: Integers | None
+    pings: dict[str, NDArray[np.float64]]
+    beams: dict[str, NDArray[Any]]
+    counts: Integers
+
+    def __len__(self) -> int:
+        return len(self.numbers)
+
+    def take(self, kept: NDArray[np.bool_]) -> Rows:
+        """Some of the rows, by mask."""
+        if kept.all():
+            return self
+        owned = np.repeat(kept, self.counts)
+
+        def picked(values: Integers | None) -> Integers | None:
+            return None if values is None else values[kept]
+
+        return Rows(
+            self.numbers[kept],
+            self.time[kept],
+            picked(self.ping),
+            picked(self.line),
+            picked(self.channel),
+            {k: v[kept] for k, v in self.pings.items()},
+            {k: v[owned] for k, v in self.beams.items()},
+            self.counts[kept],
+        )
+
+
+@dataclass(slots=True)
+class Names:
+    """Names of lines and channels met so far, over all files of one reading."""
+
+    line: NameCodes = field(default_factory=NameCodes)
+    channel: NameCodes = field(default_factory=NameCodes)
+
+
+class RowReader:
+    """Reads one file as canonical rows, keeping its account."""
+
+    def __init__(
+        self, probe: FileProbe, names: Names, wanted: frozenset[str] | None = None
+    ) -> None:
+        self.probe, self.names = probe, names
+        self.account = FileAccount(probe.shown, notes=list(probe.notes))
+        self.state = TimeState()
+        self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
+        self._latest = NO_TIME
+
+    def batches(self) -> Iterator[Rows]:
+        """The file's rows, batch after batch, in file order."""
+        for raw in self._raw():
+            yield self._rows(raw)
+
+    def _raw(self) -> Iterator[RawBatch]:
+        sources = {b.source: self._kind(b) for b in self.bindings}
+        for source in self.probe.times.sources:
+            sources[source] = self._time_kind()
+        opened = self.probe.open()
+        if isinstance(opened, TableSource):
+            try:
+                for _, raw in opened.batches(list(sources)):
+                    yield raw
+            finally:
+                opened.close()
+        else:
+            yield from opened.batches(sources)
+
+    def _time_kind(self) -> pa.DataType:
+        plan = self.probe.times
+        whole = plan.kind == "number" and float(round(plan.step)) == plan.step and plan.step >= 1
+        return pa.int64() if whole and not plan.decimal_comma else pa.string()
+
+    def _kind(self, binding: Binding) -> pa.DataType:
+        if binding.role in WHOLE:
+            return pa.int64()
+        column = COLUMNS[binding.role]
+        return pa.float64() if column.kind == "number" else pa.string()
+
+    def _rows(self, raw: RawBatch) -> Rows:
+        account, n = self.account, raw.length
+        account.rows_read += n + len(raw.broken)
+        for number, reason, text in raw.broken:
+            self._reject(number, reason, text)
+        reasons: list[tuple[NDArray[np.bool_], str]] = []
+        time, bad_time = convert_times(self.probe.times, dict(raw.columns), self.state)
+        reasons.append((bad_time, "the time cannot be read"))
+        missing = (time == NO_TIME) & ~bad_time
+        reasons.append((missing, "no time"))
+        known = ~missing & ~bad_time
+        reasons.append(
+            (known & (time < EARLIEST), "the time is before 1990: the clock was not set")
+        )
+        reasons.append((known & (time > LATEST), "the time is after 2100"))
+        rows = self._converted(raw, time, reasons)
+        rejected = np.zeros(n, dtype=bool)
+        for mask, reason in reasons:
+            fresh = mask & ~rejected
+            if fresh.any():
+                positions = np.flatnonzero(fresh)
+                kept = positions[: max(0, KEPT_REJECTS - len(account.rejected_rows))]
+                texts = raw.texts(kept) if len(kept) else []
+                for position, text in zip(kept.tolist(), texts, strict=True):
+                    self._reject(int(raw.rows[position]), reason, text)
+                left = len(positions) - len(kept)
+                account.rows_rejected += left
+                if left:
+                    account.reasons[reason] = account.reasons.get(reason, 0) + left
+                rejected |= fresh
+        rows = rows.take(~rejected)
+        if len(rows):
+            self._latest = max(self._latest, int(rows.time.max()))
+        return rows
+
+    @property
+    def latest(self) -> int:
+        """The latest time met."""
+        return self._latest
+
+    def reject(self, number: int, reason: str, text: str = "") -> None:
+        """Count a row as rejected that was taken at first."""
+        self._reject(number, reason, text)
+
+    def _reject(self, number: int, reason: str, text: str) -> None:
+        account = self.account
+        account.rows_rejected += 1
+        account.reasons[reason] = account.reasons.get(reason, 0) + 1
+        if len(account.rejected_rows) < KEPT_REJECTS:
+            account.rejected_rows.append(RejectedRow(self.probe.shown, number, reason, text))
+
+    def _converted(
+        self, raw: RawBatch, time: Integers, reasons: list[tuple[NDArray[np.bool_], str]]
+    ) -> Rows:
+        n = raw.length
+        pings: dict[str, NDArray[np.float64]] = {}
+        flat: dict[str, NDArray[Any]] = {}
+        codes: dict[str, Integers | None] = {"ping": None, "line": None, "channel": None}
+        counts = np.ones(n, dtype=np.int64)
+        wide: dict[str, list[Converted]] = {}
+        numbers: list[int] = []
+        for binding in self.bindings:
+            array = raw.columns[binding.source]
+            role = binding.role
+            if role in NAMES:
+                codes[role] = getattr(self.names, role).encode(_plain_text(array))
+            elif role == "ping":
+                codes[role] = self._whole(binding, array, reasons)
+            elif COLUMNS[role].grain == "ping":
+                found = self._value(binding, array)
+                self._note(found, reasons, None)
+                pings[role] = np.asarray(found.values, dtype=np.float64)
+                self._count_missing(role, found)
+            elif self.probe.layout == "wide":
+                found = self._value(binding, array)
+                self._note(found, reasons, None)
+                self._count_missing(role, found)
+                wide.setdefault(role, []).append(found)
+                if role == next(iter(wide)):
+                    numbers.append(binding.number)
+            elif self.probe.layout == "list":
+                array = array.combine_chunks() if isinstance(array, pa.ChunkedArray) else array
+                lengths = _list_lengths(array)
+                found = self._value(binding, positions_of(array))
+                self._note(found, reasons, np.repeat(np.arange(n), lengths))
+                self._count_missing(role, found)
+                flat[role] = found.values
+                if len(flat) > 1 and (lengths != counts).any():
+                    uneven = lengths != counts
+                    reasons.append((uneven, "the lists of beams differ in length"))
+                    # Uneven lists cannot be told apart beam by beam: none of such a row is used.
+                    flat[role] = np.full(int(counts.sum()), np.nan)
+                else:
+                    counts = lengths
+            elif role == "beam":
+                values = self._whole(binding, array, reasons)
+                flat[role] = values.astype(np.float64)
+            else:
+                found = self._value(binding, array)
+                self._note(found, reasons, None)
+                self._count_missing(role, found)
+                flat[role] = found.values
+        if wide:
+            flat, counts = _side_by_side(wide, numbers, n)
+        for role, value in self.probe.constants:
+            if role in NAMES and codes[role] is None:
+                codes[role] = np.full(n, getattr(self.names, role).code(value), dtype=np.int64)
+        self._no_fix(pings)
+        return Rows(
+            raw.rows, time, codes["ping"], codes["line"], codes["channel"], pings, flat, counts
+        )
+
+    def _whole(
+        self, binding: Binding, array: pa.Array, reasons: list[tuple[NDArray[np.bool_], str]]
+    ) -> Integers:
+        values, missing, bad = to_whole(array, self.probe.decimal_comma)
+        if bad is not None:
+            reasons.append((bad, f"the {binding.role} number is no whole number"))
+        if missing.any():
+            reasons.append((missing, f"no {binding.role} number"))
+        return values
+
+    def _value(self, binding: Binding, array: pa.Array) -> Converted:
+        kind = COLUMNS[binding.role].kind
+        if kind == "flag":
+            return to_flag(binding, array)
+        if kind == "form":
+            return to_form(array)
+        return to_number(binding, array, self.probe.depth_from, self.probe.decimal_comma)
+
+    def _note(
+        self,
+        found: Converted,
+        reasons: list[tuple[NDArray[np.bool_], str]],
+        owners: Integers | None,
+    ) -> None:
+        """Bad cells reject their row; one bad beam in a ping's list only makes that beam missing."""
+        for mask, reason in (
+            (found.bad, found.reason),
+            (found.impossible, found.impossible_reason),
+        ):
+            if mask is None or not mask.any():
+                continue
+            if owners is None and self.probe.layout != "wide":
+                reasons.append((mask, reason))
+            else:
+                values = found.values.astype(np.float64, copy=True)
+                values[mask] = np.nan
+                found.values = values
+                found.emptied += int(mask.sum())
+
+    def _count_missing(self, role: str, found: Converted) -> None:
+        if found.emptied:
+            self.account.missing[role] = self.account.missing.get(role, 0) + found.emptied
+
+    def _no_fix(self, pings: dict[str, NDArray[np.float64]]) -> None:
+        """A position of 0,0 is where no fix was."""
+        for first, second in (("latitude", "longitude"), ("easting", "northing")):
+            if first in pings and second in pings:
+                none = (pings[first] == 0.0) & (pings[second] == 0.0)
+                if none.any():
+                    for role in (first, second):
+                        pings[role] = np.where(none, np.nan, pings[role])
+                    count = int(none.sum())
+                    self.account.missing["position"] = (
+                        self.account.missing.get("position", 0) + count
+                    )
+
+
+def _plain_text(array: pa.Array) -> pa.Array:
+    return array.combine_chunks() if isinstance(array, pa.ChunkedArray) else array
+
+
+def _list_lengths(array: pa.Array) -> Integers:
+    import pyarrow.compute as pc
+
+    lengths = pc.list_value_length(array).fill_null(0)
+    return np.asarray(lengths.to_numpy(zero_copy_only=False)).astype(np.int64)
+
+
+def _side_by_side(
+    wide: Mapping[str, list[Converted]], numbers: list[int], n: int
+) -> tuple[dict[str, NDArray[Any]], Integers]:
+    """Beam columns side by side as beams after one another; a beam without any value is none."""
+    width = max(len(found) for found in wide.values())
+    grids: dict[str, NDArray[Any]] = {}
+    for role, found in wide.items():
+        if len(found) == width:
+            grids[role] = np.column_stack([np.asarray(f.values, dtype=np.float64) for f in found])
+    there = np.zeros((n, width), dtype=bool)
+    for role, grid in grids.items():
+        if role != "accepted":
+            there |= ~np.isnan(grid)
+    flat: dict[str, NDArray[Any]] = {
+        role: (grid[there] != 0.0 if role == "accepted" else grid[there])
+        for role, grid in grids.items()
+    }
+    flat["beam"] = np.broadcast_to(np.array(numbers, dtype=np.float64), (n, width))[there]
+    return flat, there.sum(axis=1).astype(np.int64)
