@@ -174,9 +174,7 @@ class _Assembly:
             self._put(name_, column, COLUMNS[name_].unit)
         for computed in done:
             for key, node in computed.plan.nodes.items():
-                if node.grain == "ping" and key != "time" and "logged(" not in key:
-                    self._merge(computed, key, computed.values[key], node.unit)
-                elif (
+                if (node.grain == "ping" and key != "time" and "logged(" not in key) or (
                     node.grain == "survey"
                     and node.way in ("stated", "recipe", "assumed")
                     and not isinstance(computed.values[key], str)

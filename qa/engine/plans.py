@@ -28,6 +28,9 @@ Way = Literal["logged", "stated", "assumed", "recipe", "limit", "reduction", "al
 TIMED = frozenset(("ping_interval", "ping_span"))
 """A rule that rests on one of these is a timing rule: not assessed where a ping was stamped on arrival."""
 
+MADE_FROM = ("near_range", "farthest_range")
+"""Ranges of the two beams that are made for a side-scan ping, in this order."""
+
 _RANK: dict[Origin, int] = {
     "logged": 0,
     "computed from logged": 1,
@@ -265,6 +268,8 @@ class Resolver:
             grain = "ping"
         conditions = [self.resolve(name) for name, _ in recipe.only]
         weakest = max((_RANK[n.origin] for n in [*inputs, *conditions]), default=2)
+        if recipe.guess:
+            weakest = _RANK["assumed"]
         return Node(
             key,
             "recipe",
@@ -368,7 +373,7 @@ class Resolver:
         return best
 
     def _made(self) -> Node:
-        inputs = self.all_of(("near_range", "farthest_range"))
+        inputs = self.all_of(MADE_FROM)
         weakest = max(_RANK[n.origin] for n in inputs)
         return Node(
             "slant_range",
@@ -376,7 +381,7 @@ class Resolver:
             "beam",
             COLUMNS["slant_range"].unit,
             _COMPUTED[weakest],
-            tuple(n.key for n in inputs),
+            MADE_FROM,
         )
 
 

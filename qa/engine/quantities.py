@@ -29,7 +29,7 @@ class Recipe:
     may be missing. ``kinds`` are the sonars that it is for, none meaning all; ``only`` says the same of other choices, such as
     ``{"depth_from": "datum"}``. ``first`` puts it before every
     other recipe, whatever its inputs' origin. ``whole_line`` functions see all pings of a line and channel at
-    once. ``assumes`` is what taking this way supposes, listed on the report.
+    once. ``assumes`` is what taking this way supposes, listed on the report; a ``guess`` ranks as assumed.
     """
 
     name: str
@@ -43,6 +43,7 @@ class Recipe:
     first: bool
     whole_line: bool
     assumes: str
+    guess: bool
     about: str
     source: str
     formula: str
@@ -63,6 +64,7 @@ def quantity(
     first: bool = False,
     whole_line: bool = False,
     assumes: str = "",
+    guess: bool = False,
     about: str = "",
     source: str = "",
     formula: str = "",
@@ -103,6 +105,7 @@ def quantity(
         first,
         whole_line,
         assumes,
+        guess,
         about or (lines[0] if lines else ""),
         source,
         formula,
@@ -470,6 +473,7 @@ quantity(
     needs=("beamwidth_along",),
     kinds=(SINGLE_BEAM,),
     assumes="the single beam is as wide across as it is along",
+    guess=True,
     about="Beam width across the track, of a round transducer.",
 )
 quantity(
@@ -479,6 +483,7 @@ quantity(
     needs=("beamwidth_across",),
     kinds=(SINGLE_BEAM,),
     assumes="the single beam is as wide along as it is across",
+    guess=True,
     about="Beam width along the track, of a round transducer.",
 )
 quantity(

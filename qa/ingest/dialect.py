@@ -332,28 +332,30 @@ def _is_units_row(cells: Sequence[str]) -> bool:
     known = 0
     for cell in filled:
         bare = cell.strip("()[]{}").strip()
-        if unit_of(bare, None) is not None or "since" in bare.lower():
-            known += 1
-        elif bare.lower() in (
-            "-",
-            "utc",
-            "#",
-            "none",
-            "text",
-            "iso8601",
-            "iso",
-            "no",
-            "n/a",
-            "hh:mm:ss",
-            "yyyy-mm-dd",
-            "bool",
-            "0/1",
-            "dd",
-            "string",
-            "id",
+        if (
+            unit_of(bare, None) is not None
+            or "since" in bare.lower()
+            or bare.lower()
+            in (
+                "-",
+                "utc",
+                "#",
+                "none",
+                "text",
+                "iso8601",
+                "iso",
+                "no",
+                "n/a",
+                "hh:mm:ss",
+                "yyyy-mm-dd",
+                "bool",
+                "0/1",
+                "dd",
+                "string",
+                "id",
+            )
+            or re.fullmatch(r"[\(\[{].*[\)\]}]", cell)
         ):
-            known += 1
-        elif re.fullmatch(r"[\(\[{].*[\)\]}]", cell):
             known += 1
     return known >= max(1, 0.7 * len(filled))
 

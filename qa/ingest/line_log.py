@@ -330,7 +330,7 @@ class OpenedLine:
             reader.account.notes.append(
                 f"{repeats} rows repeat the time of the row before them, as read."
             )
-        now = int(dt.datetime.now(dt.timezone.utc).timestamp()) * 1_000_000_000
+        now = int(dt.datetime.now(dt.UTC).timestamp()) * 1_000_000_000
         if reader.latest > now:
             reader.account.notes.append("Some times lie in the future; they were used.")
 

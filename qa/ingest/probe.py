@@ -26,7 +26,7 @@ from qa.ingest.table_source import (
     TableSource,
     _is_list,
 )
-from qa.ingest.text_source import RawBatch, TextFormat, TextSource, open_bytes, probe_text
+from qa.ingest.text_source import RawBatch, TextFormat, TextSource, probe_text
 from qa.ingest.times import NoTimeError, TimePlan, plan_times
 from qa.ingest.values import number_of
 from qa.model.columns import COLUMNS

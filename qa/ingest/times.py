@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, field, replace
-from datetime import datetime, timedelta, timezone
+from datetime import UTC, datetime, timedelta
 from typing import Any
 from zoneinfo import ZoneInfo
 
@@ -27,7 +27,7 @@ LATEST = 4_102_444_800 * SECOND_NS
 """2100-01-01."""
 
 _STEPS = {"s": SECOND_NS, "ms": 1_000_000, "us": 1_000, "ns": 1}
-_MONTHS = "jan feb mar apr may jun jul aug sep oct nov dec".split()
+_MONTHS = ["jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec"]
 _CLOCK = (
     r"(?P<H>\d{1,2}):?(?P<M>\d{2})(?::?(?P<S>\d{2})(?:[.,](?P<f>\d{1,12}))?)?"
     r"\s*(?P<p>[AaPp]\.?[Mm]\.?)?\s*(?P<z>[Zz]|UTC|utc|GMT|UT|[+-]\d{2}(?::?\d{2})?)?"
@@ -356,12 +356,8 @@ def _text_form(texts: list[str], stated: str, where: str, source: str) -> str:
         if share(form) >= 0.5:
             return form
     if share("dmy") >= 0.5:
-        pairs = [
-            (int(m[1]), int(m[2]), m[3])
-            for t in sample
-            if (m := re.match(r"(\d{1,2})([-/.])(\d{1,2})", t)) is not None
-            for m in [(None, m[1], m[3], m[2])]
-        ]
+        matches = (re.match(r"(\d{1,2})([-/.])(\d{1,2})", t) for t in sample)
+        pairs = [(int(m[1]), int(m[3]), m[2]) for m in matches if m is not None]
         firsts, seconds = {p[0] for p in pairs}, {p[1] for p in pairs}
         if max(firsts) > 12 and max(seconds) <= 12:
             return "dmy"
@@ -892,7 +888,7 @@ def resolution(times: Integers) -> int:
 
 def iso(time: int) -> str:
     """An instant as ISO 8601, UTC."""
-    moment = datetime(1970, 1, 1, tzinfo=timezone.utc) + timedelta(microseconds=int(time) // 1000)
+    moment = datetime(1970, 1, 1, tzinfo=UTC) + timedelta(microseconds=int(time) // 1000)
     return moment.strftime("%Y-%m-%dT%H:%M:%S.%f").rstrip("0").rstrip(".") + "Z"
 
 

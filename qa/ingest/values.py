@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -316,10 +317,8 @@ def to_whole(array: pa.Array, decimal_comma: bool) -> tuple[NDArray[np.int64], M
     if pa.types.is_dictionary(array.type):
         array = array.cast(array.type.value_type)
     if pa.types.is_string(array.type) or pa.types.is_large_string(array.type):
-        try:
+        with contextlib.suppress(pa.ArrowInvalid):
             array = pc.utf8_trim_whitespace(array).cast(pa.int64())
-        except pa.ArrowInvalid:
-            pass
     if pa.types.is_integer(array.type) and not pa.types.is_uint64(array.type):
         missing = np.asarray(array.is_null().to_numpy(zero_copy_only=False))
         whole = array.cast(pa.int64())
