@@ -152,6 +152,42 @@ def stamped_on_arrival(ping_span: Floats, bottom_travel_time: Floats) -> Floats:
         return ((short & bunched) | (ping_span <= 0.0)).astype(float)
 
 
+def interval_as_sent(ping_interval: Floats, stamped_on_arrival: Any = 0.0) -> Floats:
+    """Time from each ping to the next, a logger's stall shared among the pings it held back.
+
+    Where the pings that follow were stamped on arrival, the interval before them and theirs together are
+    their sending, so their mean is taken.
+
+    Parameters
+    ----------
+    ping_interval : ndarray of float64, shape (n,)
+        [s]
+    stamped_on_arrival : ndarray of float64, shape (n,), optional
+        1 for a ping whose time is a stamp of arrival.
+
+    Returns
+    -------
+    ndarray of float64, shape (n,)
+        [s]
+
+    Examples
+    --------
+    >>> interval_as_sent(np.array([0.1, 0.3, 0.0, 0.0, 0.1]), np.array([0, 0, 1, 1, 0.0])).round(3).tolist()
+    [0.1, 0.1, 0.0, 0.0, 0.1]
+    """
+    n = len(ping_interval)
+    held = np.broadcast_to(np.asarray(stamped_on_arrival) == 1.0, (n,))
+    if not held.any():
+        return ping_interval
+    # The first ping from each one on that was not held back.
+    free = np.where(held, n, np.arange(n))
+    following = np.minimum.accumulate(free[::-1])[::-1]
+    after = np.append(following[1:], n)
+    ends = np.concatenate([[0.0], np.nancumsum(ping_interval)])
+    shared = (ends[after] - ends[:-1]) / np.maximum(after - np.arange(n), 1)
+    return np.where(held | np.isnan(ping_interval), ping_interval, shared)
+
+
 CLOCK_FAULTS = ("in order", "steps back", "repeats", "stamped on arrival")
 
 
