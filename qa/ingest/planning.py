@@ -84,8 +84,9 @@ def plan_logs(
     for item in probes:
         by_source[item[1].lines.source].append(item)
     names = _line_names([p.shown for p, _ in by_source["file"]])
-    for (item, _), name in zip(by_source["file"], names, strict=True):
-        lines.append(LineTask(name, (item.shown,), (FilePart(item),), item.size, day))
+    for (own_probe, _), name in zip(by_source["file"], names, strict=True):
+        part = FilePart(own_probe)
+        lines.append(LineTask(name, (own_probe.shown,), (part,), own_probe.size, day))
     for source in ("column", "gap"):
         lines += _split(by_source[source], source, day, failed)
     order = {shown: i for i, (shown, _) in enumerate(found)}
@@ -158,7 +159,7 @@ def _files(logs: Sequence[str | Path]) -> list[tuple[str, Path]]:
             matched = [path]
         elif glob.has_magic(text):
             matched = sorted(
-                (Path(p) for p in glob.glob(text, recursive=True)),
+                (Path(p) for p in glob.glob(text, recursive=True)),  # noqa: PTH207  # takes any pattern
                 key=lambda p: natural(p.as_posix()),
             )
             matched = [p for p in matched if p.is_file()]

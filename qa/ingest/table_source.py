@@ -195,7 +195,7 @@ class TableSource:
             if not names:
                 yield from _empty(self.groups[group], size)
                 return
-            columns = sorted({name for name in names})
+            columns = sorted(set(names))
             yield from self._file.iter_batches(
                 batch_size=size, row_groups=[group], columns=columns, use_threads=True
             )

@@ -343,7 +343,7 @@ def _text_form(texts: list[str], stated: str, where: str, source: str) -> str:
         ) / len(sample)
 
     if "%" in stated:
-        order = [d for d in re.findall(r"%([dmyYjbB])", stated)]
+        order = list(re.findall(r"%([dmyYjbB])", stated))
         if "y" in order:
             raise InputError(
                 "Years of two digits are not accepted.", where=where, found=stated, expected="%Y"

@@ -297,7 +297,8 @@ class NameCodes:
         codes = np.array([self.code(w) for w in words], dtype=np.int64)
         if not len(codes):
             return np.zeros(len(array), dtype=np.int64)
-        return codes[indices.to_numpy(zero_copy_only=False)]
+        encoded: NDArray[np.int64] = codes[indices.to_numpy(zero_copy_only=False)]
+        return encoded
 
 
 def _name(value: Any) -> str:

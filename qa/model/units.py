@@ -118,7 +118,7 @@ meter = [length] = m = metre
 second = [time] = s = sec
 degree = [angle] = deg = ° = degrees_north = degrees_east = degree_north = degree_east = degT
 decibel = [level] = dB = db = DB
-degree_Celsius = [temperature] = degC = celsius = °C = deg_C = ℃
+degree_Celsius = [temperature] = degC = celsius = °C = deg_C = ℃ = degree_C = degrees_C = degreeC = degreesC = degrees_Celsius = Celsius = degree_centigrade
 radian = 57.29577951308232 * degree = rad
 gradian = 0.9 * degree = grad = gon
 arcminute = degree / 60 = arcmin
