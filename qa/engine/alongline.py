@@ -188,6 +188,14 @@ def interval_as_sent(ping_interval: Floats, stamped_on_arrival: Any = 0.0) -> Fl
     return np.where(held | np.isnan(ping_interval), ping_interval, shared)
 
 
+def usual_interval(interval_per_ping: Floats, typical_interval: Floats) -> Floats:
+    """The interval that a re-run may count on: each ping's own, or the typical one where the log stopped. [s]"""
+    with np.errstate(invalid="ignore"):
+        return np.where(
+            interval_per_ping > 3.0 * typical_interval, typical_interval, interval_per_ping
+        )
+
+
 CLOCK_FAULTS = ("in order", "steps back", "repeats", "stamped on arrival")
 
 

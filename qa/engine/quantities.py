@@ -460,6 +460,7 @@ quantity(
     formula="k/(2R/c + τ)",
     source="C-13 ch. 4 §2.3.6.3",
 )
+quantity("usual_interval", alongline.usual_interval, unit="s")
 quantity("interval_as_sent", alongline.interval_as_sent, unit="s", whole_line=True)
 quantity("stamped_on_arrival", alongline.stamped_on_arrival, unit="1", whole_line=True)
 quantity("clock_fault", alongline.clock_fault, unit="1", whole_line=True)
