@@ -164,7 +164,7 @@ def audit(
     choice = _sheet_choice(sheet, facts, limits or {})
     rules = choice.load(facts)
     _check_parts(choice, facts)
-    target = None if out is None else _checked_target(Path(out))
+    target = None if out is None else checked_target(Path(out))
     plan = plan_logs(paths, facts, day)
     folder = None if target is None else _folder_beside(target)
     try:
@@ -573,27 +573,27 @@ def _sum(values: Iterable[float | None]) -> float | None:
 # Where the results go
 
 
-def _checked_target(target: Path) -> Path:
-    """The target, if it is free or holds an earlier audit; else one clear error."""
+def checked_target(target: Path, written: str = "findings.json") -> Path:
+    """The target, if it is free or holds what an earlier run wrote; else one clear error."""
     if target.exists() and not target.is_dir():
         raise OutputError(
             "The output is not a folder.", where=str(target), advice="Name a folder with --out."
         )
-    if target.is_dir() and any(target.iterdir()) and not is_earlier_audit(target):
+    if target.is_dir() and any(target.iterdir()) and not is_earlier_run(target, written):
         raise OutputError(
             "The folder holds something else.",
             where=str(target),
-            expected="an empty or new folder, or one with an earlier audit",
+            expected="an empty or new folder, or that of an earlier run",
             advice="Name another folder with --out.",
         )
     return target
 
 
-def is_earlier_audit(folder: Path) -> bool:
+def is_earlier_run(folder: Path, written: str) -> bool:
     """Whether a folder holds what this program wrote."""
     try:
-        with (folder / "findings.json").open(encoding="utf-8") as stream:
-            return '"pingworthy"' in stream.read(400)
+        with (folder / written).open(encoding="utf-8") as stream:
+            return "pingworthy" in stream.read(400)
     except OSError:
         return False
 

@@ -126,6 +126,32 @@ def demo(
             raise
 
 
+@app.command()
+def compare(
+    before: Annotated[Path, typer.Argument(help="Folder of the earlier audit.")],
+    after: Annotated[Path, typer.Argument(help="Folder of the audit of the re-run.")],
+    out: Out = Path("pingworthy-compare"),
+    within: Annotated[
+        float,
+        typer.Option("--within", min=0.1, help="Metres within which ground counts as the same."),
+    ] = 10.0,
+    quiet: Quiet = False,
+) -> None:
+    """What a re-run mended, what remains and what is new, matched by position.
+
+    Exit status: 0 everything is mended and nothing is new, 1 otherwise.
+    """
+    from qa.audit import checked_target
+    from qa.report.compare import compare_audits, summary
+
+    result = compare_audits(before, after, checked_target(out, "compare.json"), within)
+    if not quiet:
+        typer.echo(summary(result))
+        typer.echo(f"Page: {out / 'compare.html'}")
+    open_still = any(m.outcome != "mended" for m in result.matched) or bool(result.new)
+    raise typer.Exit(1 if open_still else 0)
+
+
 def _audit(
     logs: list[str],
     survey: Path | None,

@@ -206,3 +206,29 @@ def test_demo_finds_the_planted_faults(tmp_path: Path) -> None:
     for line in findings["lines"]:
         if line["line"] not in faulty:
             assert line["verdict"] == "in spec", line["line"]
+
+
+def _run_of(path: Path, pulse: int) -> Path:
+    rows = "".join(
+        f"{i},2026-05-04T10:{i // 300:02d}:{i // 5 % 60:02d}.{i % 5 * 200:03d}Z,12.0,{pulse},{38.7 + i * 4e-6:.6f},-9.2\n"
+        for i in range(400)
+    )
+    path.write_text(
+        "ping,time,depth (m),pulse length (us),latitude,longitude\n" + rows, encoding="utf-8"
+    )
+    return path
+
+
+def test_compare_says_what_a_rerun_mended(tmp_path: Path) -> None:
+    for name, pulse in (("first", 2000), ("again", 100)):
+        log = _run_of(tmp_path / f"{name}.csv", pulse)
+        pingworthy("audit", log, "--out", tmp_path / name, "--set", "target_size=1m")
+    mended = pingworthy("compare", tmp_path / "first", tmp_path / "again", "--out", tmp_path / "c")
+    assert mended.returncode == 0, mended.stderr + mended.stdout
+    assert "mended" in mended.stdout
+    assert (tmp_path / "c" / "compare.html").is_file()
+    same = pingworthy("compare", tmp_path / "first", tmp_path / "first", "--out", tmp_path / "c")
+    assert same.returncode == 1
+    refused(
+        pingworthy("compare", tmp_path, tmp_path / "again", "--out", tmp_path / "d"), str(tmp_path)
+    )

@@ -91,6 +91,7 @@ class Comparison:
         """The content of ``compare.json``."""
         keys = ("id", "line", "channel", "rule", "start", "end", "first_ping", "last_ping")
         return {
+            "tool": "pingworthy",
             "within_metres": self.within,
             "counts": {o: self.count(o) for o in OUTCOMES},
             "sections": [

@@ -10,7 +10,7 @@ import pytest
 
 from qa.model.findings import MET, MISSED, NOT_ASSESSED
 
-TARGET = {"target_size": "1 m"}
+TARGET = {"target_size": "1 m", "hits_required": 3}
 
 
 def test_clean_line_is_in_spec_everywhere(run: Any, swath: Any, multibeam: dict[str, Any]) -> None:
@@ -262,7 +262,7 @@ def test_side_scan_beams_are_made_at_near_and_far_range(run: Any, memory_log: An
         "beamwidth_along": 0.6,
         "sound_speed": 1500.0,
     }
-    found = run(log, stated, {"target_size": "1 m", "near_range": "15 m"})
+    found = run(log, stated, {**TARGET, "near_range": "15 m"})
     assert found.rule("along-resolution").worst == pytest.approx(
         2 * 75.0 * math.tan(math.radians(0.3))
     )
@@ -273,7 +273,7 @@ def test_side_scan_beams_are_made_at_near_and_far_range(run: Any, memory_log: An
     assert found.rule("pings-on-target").worst == math.floor((1.0 + footprint) / 0.225)
     assert "footprint-growth" not in {r.id for r in found.result.finding.rules}
     assert found.rule("ping-interval").pings_exempt == 2
-    unstated = run(log, stated, {"target_size": "1 m"})
+    unstated = run(log, stated, TARGET)
     assert unstated.rule("pings-on-target").reason == "near_range is not stated"
     assert n == found.result.finding.pings
 
