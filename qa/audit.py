@@ -18,7 +18,7 @@ from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from pathlib import Path
-from typing import Any, Literal
+from typing import Any, Literal, NoReturn
 
 import qa
 from qa.engine.evaluate import evaluate_line
@@ -101,6 +101,7 @@ class LineOutcome:
     accounts: tuple[FileAccount, ...]
     artifacts: LineArtifacts | None
     input_error: str | None = None
+    in_scope: bool = True
 
 
 def audit(
@@ -208,6 +209,8 @@ def run_line(job: LineJob) -> LineOutcome:
     try:
         log = open_line(job.task, job.survey)
         survey = log.survey
+        if not len(log.ping_table()):
+            return _without_pings(job, log.accounts())
         result = evaluate_line(log, survey, job.sheet.load(survey), job.task.files)
     except PingworthyError as error:
         return _failed(job, str(error), str(error))
@@ -233,6 +236,23 @@ def run_line(job: LineJob) -> LineOutcome:
         accounts,
         artifacts,
     )
+
+
+def _without_pings(job: LineJob, accounts: tuple[FileAccount, ...]) -> LineOutcome:
+    """A line none of whose rows is in scope is left out; one whose rows were all rejected is an error of its files."""
+    rejected = sum(a.rows_rejected for a in accounts)
+    if not rejected:
+        return replace(_failed(job, "no ping is in scope", None), accounts=accounts, in_scope=False)
+    reasons = sorted(
+        {r: n for a in accounts for r, n in a.reasons.items()}.items(), key=lambda item: -item[1]
+    )
+    error = InputError(
+        "No row could be used.",
+        where=", ".join(job.task.files),
+        found="; ".join(f"{reason} ({count} rows)" for reason, count in reasons[:5]),
+        advice="Check the columns and their units with the columns command.",
+    )
+    return replace(_failed(job, str(error), str(error)), accounts=accounts)
 
 
 def _failed(job: LineJob, error: str, input_error: str | None) -> LineOutcome:
@@ -347,13 +367,10 @@ def _together(
     require_assessed: bool,
 ) -> Findings:
     inputs = _inputs(failed, outcomes)
+    outcomes = [o for o in outcomes if o.in_scope]
     lines = tuple(o.finding for o in outcomes)
     if not any(line.pings for line in lines):
-        errors = [i.error for i in inputs if i.error]
-        raise InputError(
-            errors[0] if len(errors) == 1 else f"None of the {len(inputs)} files could be used.",
-            found="; ".join(e for e in errors if e)[:2000] if len(errors) > 1 else "",
-        )
+        _refuse(inputs, lines, day)
     rules = tuple(_rule(sheet, rule, outcomes) for rule in sheet.rules)
     verdict: Verdict = "not assessed"
     if any(line.verdict == "out of spec" for line in lines):
@@ -401,6 +418,26 @@ def _together(
         sections=tuple(s for o in outcomes for s in o.sections),
     )
     return replace(findings, exit_status=_exit_status(findings, outcomes, require_assessed))
+
+
+def _refuse(
+    inputs: Sequence[InputFile], lines: Sequence[LineFinding], day: DayChoice | None
+) -> NoReturn:
+    """No line has a ping: say why."""
+    errors = list(dict.fromkeys(i.error for i in inputs if i.error))
+    failures = [line.error for line in lines if line.error and line.error not in errors]
+    if failures:
+        raise RuntimeError(failures[0])
+    if not errors and day is not None:
+        raise InputError(
+            f"No ping is of {day.date} ({day.time_zone}).",
+            where=", ".join(i.path for i in inputs)[:300],
+            advice="Check the day, and time_zone under [vessel] in the survey file.",
+        )
+    raise InputError(
+        errors[0] if len(errors) == 1 else f"None of the {len(inputs)} files could be used.",
+        found="; ".join(errors)[:2000] if len(errors) > 1 else "",
+    )
 
 
 def _flat(tables: Mapping[str, Any]) -> dict[str, Any]:

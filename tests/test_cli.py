@@ -232,3 +232,79 @@ def test_compare_says_what_a_rerun_mended(tmp_path: Path) -> None:
     refused(
         pingworthy("compare", tmp_path, tmp_path / "again", "--out", tmp_path / "d"), str(tmp_path)
     )
+
+
+def test_a_day_takes_its_lines_only(tmp_path: Path) -> None:
+    for day in ("04", "05"):
+        text = GOOD_CSV.replace("2026-05-04", f"2026-05-{day}")
+        (tmp_path / f"day_{day}.csv").write_text(text, encoding="utf-8")
+    logs = [tmp_path / "day_04.csv", tmp_path / "day_05.csv"]
+    done = pingworthy("audit", *logs, "--day", "2026-05-05", "--out", tmp_path / "out")
+    assert done.returncode == 0, done.stderr
+    findings = json.loads((tmp_path / "out" / "findings.json").read_text(encoding="utf-8"))
+    assert [line["line"] for line in findings["lines"]] == ["day_05"]
+    assert [i["rows_out_of_scope"] for i in findings["inputs"]] == [60, 0]
+    refused(
+        pingworthy("audit", *logs, "--day", "2025-01-01", "--out", tmp_path / "out"), "2025-01-01"
+    )
+    refused(pingworthy("audit", *logs, "--day", "tuesday", "--out", tmp_path / "out"), "tuesday")
+
+
+def test_a_log_of_rejected_rows_only_says_why(tmp_path: Path) -> None:
+    path = tmp_path / "bad.csv"
+    path.write_text(
+        "time,ping,depth (m)\n" + "2026-05-04T10:00:00Z,1,soft mud\n" * 5, encoding="utf-8"
+    )
+    refused(pingworthy("audit", path, "--out", tmp_path / "out"), "bad.csv", "depth is no number")
+
+
+BAY = ROOT / "tests" / "data" / "bay"
+BAY_SURVEY = """
+[sonar]
+kind = "single-beam"
+[columns]
+order = ["latitude", "longitude", "depth", "temperature", "time"]
+[columns.units]
+time = "ms since 1970-01-01"
+"""
+
+
+def test_real_logs_of_a_bay_are_taken_as_they_are(tmp_path: Path) -> None:
+    """Parts of an open dataset (MIT, licence beside it), the facts counted here with pandas."""
+    import pandas as pd
+
+    survey = tmp_path / "bay.toml"
+    survey.write_text(BAY_SURVEY, encoding="utf-8")
+    done = pingworthy("audit", BAY / "*.csv", "--survey", survey, "--out", tmp_path / "out")
+    assert done.returncode == 1, done.stderr
+    findings = json.loads((tmp_path / "out" / "findings.json").read_text(encoding="utf-8"))
+    pings = pd.read_parquet(tmp_path / "out" / "pings.parquet")
+    for item in findings["inputs"]:
+        raw = pd.read_csv(item["path"], header=None)
+        times = raw[4]
+        assert item["rows_read"] == len(raw)
+        assert item["rows_rejected"] == raw.duplicated().sum()
+        assert item["rows_used"] == len(raw) - raw.duplicated().sum()
+        assert item["missing"]["position"] == (
+            (raw[0] == 0) & (raw[1] == 0) & ~raw.duplicated()
+        ).sum() or (item["missing"]["position"] == ((raw[0] == 0) & (raw[1] == 0)).sum())
+        zero = int((times.diff() == 0).sum())
+        assert any(f"{zero} rows repeat the time" in note for note in item["notes"]), item["notes"]
+        line = pings[pings["line"] == Path(item["path"]).stem]
+        gaps = line[line["ping_interval"] > 5.0]
+        assert len(gaps) == (times.diff() > 5000).sum()
+        assert (gaps["ping-gap: verdict"] == "missed").all()
+        # No flood: nearly all that is called a gap is one, and few pings are.
+        assert (line["ping-gap: verdict"] == "missed").sum() < len(gaps) + 0.02 * len(line)
+        stepped = int((line["clock: verdict"] == "missed").sum())
+        assert stepped >= zero - item["rows_rejected"]
+    verdicts = {rule["id"]: rule["verdict"] for rule in findings["rules"]}
+    for unknown in (
+        "range-resolution",
+        "along-resolution",
+        "pings-on-target",
+        "ping-spacing",
+        "ping-interval",
+    ):
+        assert verdicts[unknown] == "not assessed"
+    assert {a["name"] for a in findings["assumptions"]} >= {"sound_speed", "pings_in_water"}
