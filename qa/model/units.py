@@ -138,6 +138,7 @@ percent = 0.01 = pct
 _ALIASES = {
     "%": "percent",
     "1": "",
+    "1e-3": "",
     "-": "",
     "none": "",
     "psu": "",
@@ -222,6 +223,8 @@ def conversion(text: str) -> Conversion:
     expression = re.sub(r"(?<=[A-Za-zµ°])\s*\^?\s*(-?\d+)", r"**\1", asked)
     expression = re.sub(r"(?<=[\w)])\s+(?=[A-Za-zµ(])", " * ", expression)
     found = None
+    if re.search(r"\d", re.sub(r"\*\*-?\d(?!\d)|^1(?=\s*/)", "", expression)):
+        raise UnitError("Not a known unit.", found=text, expected="a unit without a number of its own")
     try:
         found = (1 * _registry().parse_units(expression)).to_base_units()
     except Exception as first:  # pint raises many unrelated kinds for a text it cannot read
