@@ -220,7 +220,7 @@ def conversion(text: str) -> Conversion:
     asked = _ALIASES.get(lowered, asked)
     if not asked:
         return Conversion(ONE)
-    expression = re.sub(r"(?<=[A-Za-zµ°])\s*\^?\s*(-?\d+)", r"**\1", asked)
+    expression = re.sub(r"(?<=[A-Za-zµ°])(?:\s*\^\s*)?(-?\d+)", r"**\1", asked)
     expression = re.sub(r"(?<=[\w)])\s+(?=[A-Za-zµ(])", " * ", expression)
     found = None
     if re.search(r"\d", re.sub(r"\*\*-?\d(?!\d)|^1(?=\s*/)", "", expression)):
