@@ -32,4 +32,6 @@ def __getattr__(name: str) -> Any:
         raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
     from importlib import import_module
 
-    return getattr(import_module(_PLACES[name]), name)
+    # Kept under its name, since importing the module of that name would stand in its way.
+    globals()[name] = found = getattr(import_module(_PLACES[name]), name)
+    return found
