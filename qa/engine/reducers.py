@@ -90,6 +90,8 @@ def reduce_beams(
     ndarray of float64, shape (pings,)
         NaN where no beam counts; 0 for a count.
     """
+    if not rows:
+        return np.full(len(groups.counts), 0.0 if reducer == "count" else np.nan)
     values = np.broadcast_to(np.asarray(values, dtype=float), (rows,))
     if accepted is not None:
         values = np.where(accepted, values, np.nan)
