@@ -8,9 +8,9 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from qa.audit import audit
     from qa.engine.sheets import load_sheet
     from qa.ingest import read_log
+    from qa.job import audit
     from qa.model.findings import Findings
     from qa.model.survey_file import load_survey_file
 
@@ -20,7 +20,7 @@ __all__ = ["Findings", "__version__", "audit", "load_sheet", "load_survey_file",
 
 _PLACES = {
     "Findings": "qa.model.findings",
-    "audit": "qa.audit",
+    "audit": "qa.job",
     "load_sheet": "qa.engine.sheets",
     "load_survey_file": "qa.model.survey_file",
     "read_log": "qa.ingest",
@@ -32,6 +32,6 @@ def __getattr__(name: str) -> Any:
         raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
     from importlib import import_module
 
-    # Kept under its name, since importing the module of that name would stand in its way.
-    globals()[name] = found = getattr(import_module(_PLACES[name]), name)
+    found = getattr(import_module(_PLACES[name]), name)
+    globals()[name] = found
     return found

@@ -141,7 +141,7 @@ def compare(
 
     Exit status: 0 everything is mended and nothing is new, 1 otherwise.
     """
-    from qa.audit import checked_target
+    from qa.job import checked_target
     from qa.report.compare import compare_audits, summary
 
     result = compare_audits(before, after, checked_target(out, "compare.json"), within)
@@ -164,7 +164,7 @@ def _audit(
     pages: str,
     quiet: bool,
 ) -> None:
-    from qa.audit import audit as run
+    from qa.job import audit as run
     from qa.model.survey_file import load_survey_file
     from qa.report import summary
 

@@ -16,6 +16,13 @@ def test_every_public_name_loads(name: str) -> None:
     assert getattr(qa, name) is getattr(qa, name)
 
 
+@pytest.mark.parametrize("name", qa.__all__)
+def test_no_module_stands_in_the_way_of_a_public_name(name: str) -> None:
+    # Importing a module of that name would put the module in the function's place.
+    assert not (Path(qa.__file__).parent / f"{name}.py").exists()
+    assert not (Path(qa.__file__).parent / name).exists()
+
+
 def test_a_name_that_is_not_there_is_an_attribute_error() -> None:
     with pytest.raises(AttributeError, match="soundings"):
         _ = qa.soundings

@@ -601,7 +601,7 @@ def judge_comparison(comparison: Comparison, values: Values) -> Judgement:
         same = left == right
         met = same if comparison.operator == "==" else not same
         return Judgement(True, met, np.nan, np.nan, 0.0 if met else -1.0)
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(all="ignore"):
         known = ~(np.isnan(left) | np.isnan(right))
         size = np.abs(right)
         if comparison.operator in ("==", "!="):

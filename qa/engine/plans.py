@@ -100,14 +100,17 @@ class PlannedRule:
 
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """Everything to compute, in order. Stage 1: ``first_pings``; 2: ``beams``; 3: ``last_pings``."""
+    """Everything to compute, in order. Stage 1: ``first_pings``; 2: ``batch``; 3: ``last_pings``.
+
+    ``batch`` holds beams' values, reductions, and such values of pings as rest on reductions and are wanted at
+    the beams: a batch holds whole pings, so all of them are known in it.
+    """
 
     available: Available
     nodes: Mapping[str, Node]
     constants: tuple[str, ...]
     first_pings: tuple[str, ...]
-    beams: tuple[str, ...]
-    reductions: tuple[str, ...]
+    batch: tuple[str, ...]
     last_pings: tuple[str, ...]
     rules: tuple[PlannedRule, ...]
     beam_columns: frozenset[str]
@@ -434,45 +437,62 @@ def make_plan(sheet: RuleSheet, available: Available, extra: Iterable[str] = ())
         raise SheetError(
             "Quantities that need each other.", where="quantities", found=" → ".join(error.args[1])
         ) from None
-    after = _after_reduction(order, reached)
+    after, late = _after_reduction(order, reached)
     beams = [k for k in order if reached[k].grain == "beam"]
     for key in beams:
-        late = [i for i in reached[key].inputs if after[i]]
-        if late:
-            raise SheetError(
-                f"{key} would need a second pass over the beams, because it needs {', '.join(late)}.",
-                where="plan",
-            )
+        _refuse_second_pass(key, [i for i in reached[key].inputs if late[i]], "plan")
+    wanted = set(beams)
     for rule_plan in planned:
-        late = [k for k in rule_plan.reads if after.get(k)]
-        if rule_plan.beam and late:
-            raise SheetError(
-                f"The requirement compares beams with {', '.join(late)}, which is known only after all "
-                "beams have passed.",
-                where=f"rule.{rule_plan.rule.id}: require",
-                advice="Reduce both sides to their ping.",
-            )
-    reductions = [k for k in order if reached[k].way == "reduction"]
+        if rule_plan.beam:
+            where = f"rule.{rule_plan.rule.id}: require"
+            _refuse_second_pass("the requirement", [k for k in rule_plan.reads if late[k]], where)
+            wanted |= set(rule_plan.reads)
+    in_batch = {
+        k
+        for k in closure(wanted, reached)
+        if reached[k].grain == "ping" and after[k] and reached[k].way != "reduction"
+    }
     pings = [k for k in order if reached[k].grain == "ping" and reached[k].way != "reduction"]
-    columns = {k for k in beams if reached[k].way == "logged"}
+    batch = [
+        k
+        for k in order
+        if reached[k].grain == "beam" or reached[k].way == "reduction" or k in in_batch
+    ]
     return Plan(
         available,
         reached,
         tuple(k for k in order if reached[k].grain in ("survey", "line")),
         tuple(k for k in pings if not after[k]),
-        tuple(beams),
-        tuple(reductions),
-        tuple(k for k in pings if after[k]),
+        tuple(batch),
+        tuple(k for k in pings if after[k] and k not in in_batch),
         tuple(planned),
-        frozenset(columns),
+        frozenset(k for k in beams if reached[k].way == "logged"),
     )
 
 
-def _after_reduction(order: list[str], nodes: Mapping[str, Node]) -> dict[str, bool]:
+def _refuse_second_pass(what: str, late: list[str], where: str) -> None:
+    if late:
+        raise SheetError(
+            f"It would need a second pass over the beams: {what} needs {', '.join(late)}, which is known only when "
+            "a whole line of pings has passed.",
+            where=where,
+            advice="Reduce both sides to their ping.",
+        )
+
+
+def _after_reduction(
+    order: list[str], nodes: Mapping[str, Node]
+) -> tuple[dict[str, bool], dict[str, bool]]:
+    """What rests on a reduction, and what on a whole line of reduced values."""
     after: dict[str, bool] = {}
+    late: dict[str, bool] = {}
     for key in order:
-        after[key] = nodes[key].way == "reduction" or any(after[i] for i in nodes[key].inputs)
-    return after
+        node = nodes[key]
+        rests = any(after[i] for i in node.inputs)
+        after[key] = node.way == "reduction" or rests
+        whole = node.recipe is not None and node.recipe.whole_line
+        late[key] = (whole and rests) or any(late[i] for i in node.inputs)
+    return after, late
 
 
 def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:

@@ -29,7 +29,7 @@ class Recipe:
     may be missing. ``kinds`` are the sonars that it is for, none meaning all; ``only`` says the same of other choices, such as
     ``{"depth_from": "datum"}``. ``first`` puts it before every
     other recipe, whatever its inputs' origin. ``whole_line`` functions see all pings of a line and channel at
-    once. ``assumes`` is what taking this way supposes, listed on the report; a ``guess`` ranks as assumed.
+    once; ``within_ping`` functions also take ``groups``, how a batch's beams fall into pings. ``assumes`` is what taking this way supposes, listed on the report; a ``guess`` ranks as assumed.
     """
 
     name: str
@@ -42,6 +42,7 @@ class Recipe:
     only: tuple[tuple[str, str], ...]
     first: bool
     whole_line: bool
+    within_ping: bool
     assumes: str
     guess: bool
     about: str
@@ -63,6 +64,7 @@ def quantity(
     only: Mapping[str, str] | None = None,
     first: bool = False,
     whole_line: bool = False,
+    within_ping: bool = False,
     assumes: str = "",
     guess: bool = False,
     about: str = "",
@@ -87,6 +89,7 @@ def quantity(
         p
         for p in inspect.signature(function).parameters.values()
         if p.kind in (p.POSITIONAL_ONLY, p.POSITIONAL_OR_KEYWORD)
+        and not (within_ping and p.name == "groups")
     ]
     names = needs if needs is not None else tuple(p.name for p in parameters)
     if len(names) > len(parameters):
@@ -104,6 +107,7 @@ def quantity(
         tuple((only or {}).items()),
         first,
         whole_line,
+        within_ping,
         assumes,
         guess,
         about or (lines[0] if lines else ""),

@@ -72,10 +72,11 @@ class LineRun:
             values[key] = self._constant(plan.nodes[key])
         for key in plan.first_pings:
             values[key] = self._ping(plan.nodes[key])
-        for key in plan.reductions:
-            reducer = plan.nodes[key].reduction
-            assert reducer is not None
-            values[key] = np.full(self.n, 0.0 if reducer.reducer == "count" else np.nan)
+        for key in plan.batch:
+            node = plan.nodes[key]
+            if node.grain == "ping":
+                counts = node.reduction is not None and node.reduction.reducer == "count"
+                values[key] = np.full(self.n, 0.0 if counts else np.nan)
         for planned in self.beam_rules:
             self.computed.worst_beams[planned.rule.id] = self._no_beams(planned)
 
@@ -158,24 +159,36 @@ class LineRun:
         self.computed.soundings += n_rows
         values = _BeamValues(self.computed.values, pings, groups)
         nodes = self.plan.nodes
+        accepted: NDArray[np.bool_] | None = None
         with np.errstate(all="ignore"):
-            for key in self.plan.beams:
+            for key in self.plan.batch:
                 node = nodes[key]
-                if node.way in ("logged", "made"):
+                if node.way == "reduction":
+                    if accepted is None:
+                        accepted = self._accepted(values, n_rows)
+                    reduced = self._reduced(node, values, groups, n_rows, accepted)
+                    self.computed.values[key][pings] = reduced
+                elif node.grain == "ping":
+                    self.computed.values[key][pings] = self._ping_in_batch(node, pings)
+                elif node.way in ("logged", "made"):
                     values[key] = np.asarray(columns[key], dtype=float)
                 elif node.way == "alias":
                     values[key] = values[node.inputs[0]]
                 elif node.limit is not None and node.limit.expression is not None:
                     values[key] = node.limit.expression.run(values)
                 else:
-                    values[key] = _by_recipe(node, values)
-            accepted = self._accepted(values, n_rows)
-            for key in self.plan.reductions:
-                self.computed.values[key][pings] = self._reduced(
-                    nodes[key], values, groups, n_rows, accepted
-                )
+                    values[key] = _by_recipe(node, values, groups)
+            accepted = self._accepted(values, n_rows) if accepted is None else accepted
             for planned in self.beam_rules:
                 self._judge_beams(planned, values, groups, n_rows, pings, accepted)
+
+    def _ping_in_batch(self, node: Node, pings: NDArray[np.int64]) -> Any:
+        """A ping's value that rests on reductions, for the pings of a batch."""
+        every = self.computed.values
+        here = {k: every[k][pings] if np.ndim(every[k]) else every[k] for k in node.inputs}
+        if node.limit is not None and node.limit.expression is not None:
+            return node.limit.expression.run(here)
+        return here[node.inputs[0]] if node.way == "alias" else _by_recipe(node, here)
 
     def _accepted(self, values: Mapping[str, Any], rows: int) -> NDArray[np.bool_] | None:
         if "accepted" not in self.plan.nodes or self.plan.available.makes_beams:
@@ -281,11 +294,14 @@ class _BeamValues(dict[str, Any]):
         return value
 
 
-def _by_recipe(node: Node, values: Mapping[str, Any]) -> Any:
+def _by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = None) -> Any:
     recipe = node.recipe
     assert recipe is not None
-    given = zip(recipe.parameters, recipe.needs, strict=True)
-    return recipe.function(**{p: values[need] for p, need in given if need not in node.absent})
+    named = zip(recipe.parameters, recipe.needs, strict=True)
+    given = {p: values[need] for p, need in named if need not in node.absent}
+    return (
+        recipe.function(**given, groups=groups) if recipe.within_ping else recipe.function(**given)
+    )
 
 
 def _thin(kept: WorstBeams) -> None:
@@ -321,7 +337,7 @@ def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> lis
     columns = frozenset().union(*(r.plan.beam_columns for r in runs))
     reading = [r for r in runs if not r.plan.available.makes_beams]
     for run in runs:
-        if run.plan.available.makes_beams and "slant_range" in run.plan.beams:
+        if run.plan.available.makes_beams and "slant_range" in run.plan.batch:
             run.make_beams(rows)
     if log.beam_columns and (reading or log.grain == "beam"):
         for batch in log.beam_batches(sorted(columns), rows):

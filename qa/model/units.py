@@ -224,7 +224,9 @@ def conversion(text: str) -> Conversion:
     expression = re.sub(r"(?<=[\w)])\s+(?=[A-Za-zµ(])", " * ", expression)
     found = None
     if re.search(r"\d", re.sub(r"\*\*-?\d(?!\d)|^1(?=\s*/)", "", expression)):
-        raise UnitError("Not a known unit.", found=text, expected="a unit without a number of its own")
+        raise UnitError(
+            "Not a known unit.", found=text, expected="a unit without a number of its own"
+        )
     try:
         found = (1 * _registry().parse_units(expression)).to_base_units()
     except Exception as first:  # pint raises many unrelated kinds for a text it cannot read

@@ -19,7 +19,7 @@ from typing import Any
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 
-from qa.audit import audit
+from qa.job import audit
 
 # as reckon.FIRST_RULES: rules whose "not assessed" the truth knows
 RECKONED = (
