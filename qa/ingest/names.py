@@ -430,7 +430,9 @@ def _match(name: str) -> tuple[str, str, str] | None:
         if unit_of(unit_text, kind) is not None:
             return role, unit_text, ""
         words = [w for w in re.split(r"[\s,;/]+", unit_text.lower()) if w]
-        if all(w in _QUALIFIERS for w in words):
+        # "Depth (s)" is in seconds, not of the starboard side: a unit of another kind is no qualifier.
+        other = certain and kind != ONE and unit_of(unit_text, None) is not None
+        if not other and all(w in _QUALIFIERS for w in words):
             return role, "", ""
         for word in re.split(r"[\s,;]+", unit_text):
             if word and unit_of(word, kind) is not None:
