@@ -172,9 +172,8 @@ def find_dialect(
             later = [n for n in following if n > first]
             first = later[0] if later else first + 1
     body = [split_line(line, separator) for n, line in data if n >= first][:400]
-    decimal_comma = separator != "," and _decimal_comma(body)
-    if len(set(names)) < len(names):
-        pass
+    # between commas, a cell that holds one stood in quotes
+    decimal_comma = _decimal_comma(body)
     return Dialect(
         encoding,
         separator,

@@ -345,9 +345,12 @@ def plain(name: str) -> str:
     return re.sub(r"[\W_]+", "", name.lower())
 
 
+def _marked_tokens(name: str) -> list[str]:
+    return [t for t in re.split(r"[\s_.\-:,;|]+", name) if t]
+
+
 def _tokens(name: str) -> list[str]:
-    spaced = re.sub(r"(?<=[a-z])(?=[A-Z])", " ", name)
-    return [t for t in re.split(r"[\s_.\-:,;|]+", spaced) if t]
+    return _marked_tokens(re.sub(r"(?<=[a-z])(?=[A-Z])", " ", name))
 
 
 def unit_of(text: str, unit: Unit | None) -> Conversion | None:
@@ -389,11 +392,12 @@ def _readings(name: str) -> list[tuple[str, str, bool]]:
         head, middle, tail = name.rpartition(separator)
         if middle and head:
             found.append((head, tail.strip(), False))
-    tokens = _tokens(name)
-    for count in (1, 2, 3):
-        if len(tokens) > count:
-            tail = "_".join(tokens[-count:])
-            found.append((" ".join(tokens[:-count]), tail, False))
+    # "freq_kHz" as written first: only then is a capital inside a word the start of another
+    for tokens in dict.fromkeys((tuple(_marked_tokens(name)), tuple(_tokens(name)))):
+        for count in (1, 2, 3):
+            if len(tokens) > count:
+                tail = "_".join(tokens[-count:])
+                found.append((" ".join(tokens[:-count]), tail, False))
     return found
 
 

@@ -298,7 +298,9 @@ def _finished(
             + ", ".join(f"{r} ({COLUMNS[r].unit})" for r in assumed)
             + ": taken in the unit in brackets."
         )
-    if any("depression" in b.source.lower() for b in others if b.role == "beam_angle"):
+    if "beam_angle_from" not in survey.stated and any(
+        "depression" in b.source.lower() for b in others if b.role == "beam_angle"
+    ):
         notes.append(
             'Beam angles are named as angles of depression: write beam_angle_from = "horizontal" under [sonar].'
         )

@@ -97,6 +97,10 @@ class RowReader:
         """The file's rows, batch after batch, in file order."""
         for raw in self._raw():
             yield self._rows(raw)
+        if self.state.leap_seconds:
+            self.account.notes.append(
+                f"{self.state.leap_seconds} times lie in a leap second (second 60): taken as that far into the next minute."
+            )
 
     def _raw(self) -> Iterator[RawBatch]:
         sources = {b.source: self._kind(b) for b in self.bindings}
@@ -182,6 +186,7 @@ class RowReader:
         flat: dict[str, NDArray[Any]] = {}
         codes: dict[str, Integers | None] = {"ping": None, "line": None, "channel": None}
         counts = np.ones(n, dtype=np.int64)
+        lists: dict[str, tuple[Binding, pa.Array]] = {}
         wide: dict[str, list[Converted]] = {}
         numbers: list[int] = []
         for binding in self.bindings:
@@ -204,19 +209,7 @@ class RowReader:
                 if role == next(iter(wide)):
                     numbers.append(binding.number)
             elif self.probe.layout == "list":
-                array = array.combine_chunks() if isinstance(array, pa.ChunkedArray) else array
-                lengths = _list_lengths(array)
-                found = self._value(binding, positions_of(array))
-                self._note(found, reasons, np.repeat(np.arange(n), lengths))
-                self._count_missing(role, found)
-                flat[role] = found.values
-                if len(flat) > 1 and (lengths != counts).any():
-                    uneven = lengths != counts
-                    reasons.append((uneven, "the lists of beams differ in length"))
-                    # Uneven lists cannot be told apart beam by beam: none of such a row is used.
-                    flat[role] = np.full(int(counts.sum()), np.nan)
-                else:
-                    counts = lengths
+                lists[role] = binding, _plain_text(array)
             elif role == "beam":
                 values = self._whole(binding, array, reasons)
                 flat[role] = values.astype(np.float64)
@@ -227,6 +220,8 @@ class RowReader:
                 flat[role] = found.values
         if wide:
             flat, counts = _side_by_side(wide, numbers, n)
+        if lists:
+            flat, counts = self._lists(lists, reasons)
         for role, value in self.probe.constants:
             if role in NAMES and codes[role] is None:
                 codes[role] = np.full(n, getattr(self.names, role).code(value), dtype=np.int64)
@@ -234,6 +229,40 @@ class RowReader:
         return Rows(
             raw.rows, time, codes["ping"], codes["line"], codes["channel"], pings, flat, counts
         )
+
+    def _lists(
+        self,
+        lists: Mapping[str, tuple[Binding, pa.Array]],
+        reasons: list[tuple[NDArray[np.bool_], str]],
+    ) -> tuple[dict[str, NDArray[Any]], Integers]:
+        """Lists of beams as beams after one another.
+
+        A list that is not there is one of missing values. Lists of one row that differ in length cannot be told
+        apart beam by beam: such a row is rejected, and has no beams.
+        """
+        there = {r: np.asarray(a.is_valid()).astype(bool) for r, (_, a) in lists.items()}
+        lengths = {r: np.where(there[r], _list_lengths(a), 0) for r, (_, a) in lists.items()}
+        counts = np.maximum.reduce(list(lengths.values()))
+        uneven = np.zeros(len(counts), dtype=bool)
+        for role, length in lengths.items():
+            uneven |= there[role] & (length != counts)
+        if uneven.any():
+            reasons.append((uneven, "the lists of beams differ in length"))
+            counts = np.where(uneven, 0, counts)
+        flat: dict[str, NDArray[Any]] = {}
+        for role, (binding, array) in lists.items():
+            found = self._value(binding, positions_of(array))
+            self._note(found, reasons, np.repeat(np.arange(len(counts)), lengths[role]))
+            self._count_missing(role, found)
+            values = found.values
+            if (lengths[role] != counts).any():
+                values = values[np.repeat(~uneven, lengths[role])]
+                filled = np.repeat(there[role] & ~uneven, counts)
+                blank = np.full(len(filled), np.nan if values.dtype != bool else True, values.dtype)
+                blank[filled] = values
+                values = blank
+            flat[role] = values
+        return flat, counts
 
     def _whole(
         self, binding: Binding, array: pa.Array, reasons: list[tuple[NDArray[np.bool_], str]]

@@ -33,9 +33,10 @@ _CLOCK = (
     r"\s*(?P<p>[AaPp]\.?[Mm]\.?)?\s*(?P<z>[Zz]|UTC|utc|GMT|UT|[+-]\d{2}(?::?\d{2})?)?"
 )
 _PATTERNS = {
-    "ymd": r"^(?P<y>\d{4})[-/.:]?(?P<m>\d{2})[-/.:]?(?P<d>\d{2})(?:(?:\s*[Tt_ ,;:-]\s*|\s+)"
+    "ymd": r"^(?P<y>\d{4})[-/.:](?P<m>\d{2})[-/.:](?P<d>\d{2})(?:(?:\s*[Tt_ ,;:-]\s*|\s+)"
     + _CLOCK
     + r")?$",
+    "packed": r"^(?P<y>\d{4})(?P<m>\d{2})(?P<d>\d{2})(?:\s*[Tt_ ,;:-]?\s*" + _CLOCK + r")?$",
     "ymd1": r"^(?P<y>\d{4})[-/.:](?P<m>\d{1,2})[-/.:](?P<d>\d{1,2})(?:(?:\s*[Tt_ ,;:-]\s*|\s+)"
     + _CLOCK
     + r")?$",
@@ -160,7 +161,7 @@ def plan_times(
             return _plan_parts(found, sample, plan, where)
         packed = values.cast(pa.string()) if pa.types.is_integer(kind) else values
         if pa.types.is_string(packed.type) and _compact(packed):
-            return replace(plan, bindings=(time,), notes=(_zone_note(zone),))
+            return replace(plan, bindings=(time,), text_form="packed", notes=(_zone_note(zone),))
         return _plan_number(time, numbers, unit_text, plan, where)
     if not pa.types.is_string(kind) and not pa.types.is_large_string(kind):
         raise InputError(
@@ -352,7 +353,7 @@ def _text_form(texts: list[str], stated: str, where: str, source: str) -> str:
         return {"dmy": "dmy", "mdy": "mdy", "ymd": "ymd1", "yj": "doy", "month": "month"}.get(
             form, "ymd"
         )
-    for form in ("ymd", "ymd1", "clock", "doy", "month"):
+    for form in ("ymd", "ymd1", "packed", "clock", "doy", "month"):
         if share(form) >= 0.5:
             return form
     if share("dmy") >= 0.5:
@@ -630,9 +631,9 @@ def _from_texts(
     count = len(array)
     times = np.full(count, NO_TIME, dtype=np.int64)
     trimmed = pc.utf8_trim_whitespace(array.cast(pa.string()))
-    empty = pc.fill_null(pc.is_in(pc.utf8_lower(trimmed), _NOTHING), True)
+    empty = pc.or_(trimmed.is_null(), pc.is_in(pc.utf8_lower(trimmed), _NOTHING))
     left = ~empty.to_numpy(zero_copy_only=False)
-    forms = [form, *(f for f in ("ymd", "ymd1", "month", "doy") if f != form)]
+    forms = [form, *(f for f in ("ymd", "ymd1", "packed", "month", "doy") if f != form)]
     for one in forms:
         if not left.any():
             break

@@ -73,9 +73,10 @@ def test_log_comes_to_what_its_text_says(name: str, tmp_path: Path) -> None:
     for column, wanted in case.get("values", {}).items():
         found = table.column(column).to_numpy()
         if column == "time":
-            assert found.astype("datetime64[ns]").tolist() == np.array(
-                wanted, "datetime64[ns]"
-            ).tolist()
+            assert (
+                found.astype("datetime64[ns]").tolist()
+                == np.array(wanted, "datetime64[ns]").tolist()
+            )
         else:
             np.testing.assert_allclose(
                 found.astype(float), np.array(wanted, float), rtol=case.get("tolerance", 1e-12)

@@ -20,9 +20,7 @@ import pyarrow.parquet as pq
 HERE = Path(__file__).parent
 UTC = dt.UTC
 START = dt.datetime(2026, 5, 4, 10, tzinfo=UTC)
-TEXT = (
-    "time,ping,depth (m)\n2026-05-04T10:00:00Z,1,10.25\n2026-05-04T10:00:01Z,2,10.5\n2026-05-04T10:00:02Z,3,11\n"
-)
+TEXT = "time,ping,depth (m)\n2026-05-04T10:00:00Z,1,10.25\n2026-05-04T10:00:01Z,2,10.5\n2026-05-04T10:00:02Z,3,11\n"
 
 
 def seconds(*offsets: float) -> list[dt.datetime]:
@@ -70,7 +68,9 @@ def parquet() -> None:
             "PulseLength": [60.0, 60.0, 120.0],
         }
     )
-    pq.write_table(with_units(table, Depth="feet", PulseLength="microseconds"), HERE / "long.parquet")
+    pq.write_table(
+        with_units(table, Depth="feet", PulseLength="microseconds"), HERE / "long.parquet"
+    )
     pq.write_table(
         pa.table(
             {
