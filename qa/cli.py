@@ -152,6 +152,35 @@ def compare(
     raise typer.Exit(1 if open_still else 0)
 
 
+@app.command()
+def columns(
+    logs: Logs,
+    survey: Survey = None,
+    sheet: Sheet = None,
+    write: Annotated[
+        Path | None,
+        typer.Option("--write", help="Write a survey file to start from.", show_default=False),
+    ] = None,
+    quiet: Quiet = False,
+) -> None:
+    """What is recognised in logs, what is missing, and which rules that keeps from being assessed.
+
+    Exit status: 0 every log could be used, 2 otherwise.
+    """
+    from qa.survey_start import describe, new_file
+
+    if write is not None:
+        new_file(write)
+    found = describe(list(logs), survey, sheet)
+    if not quiet:
+        typer.echo(found.text())
+    if write is not None:
+        found.write(write)
+        if not quiet:
+            typer.echo(f"Survey file to start from: {write}")
+    raise typer.Exit(2 if found.description.failed else 0)
+
+
 def _audit(
     logs: list[str],
     survey: Path | None,

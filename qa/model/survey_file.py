@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import fnmatch
 import hashlib
+import posixpath
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
@@ -130,7 +131,7 @@ class SurveyFile:
 def _matches(log: Path, pattern: str, folder: Path) -> bool:
     full = log.resolve().as_posix()
     wanted = (folder.resolve() / pattern).as_posix() if not Path(pattern).is_absolute() else pattern
-    return fnmatch.fnmatchcase(full, wanted)
+    return fnmatch.fnmatchcase(full, posixpath.normpath(wanted))
 
 
 def load_survey_file(path: Path | str) -> SurveyFile:
