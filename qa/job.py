@@ -23,7 +23,7 @@ from typing import Any, Literal, NoReturn
 import qa
 from qa.engine.evaluate import evaluate_line
 from qa.engine.sheets import RuleSheet, load_sheet
-from qa.ingest import DayChoice, LineTask, open_line, plan_logs
+from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.model.errors import InputError, OutputError, PingworthyError
 from qa.model.findings import (
     Assumption,
@@ -239,9 +239,11 @@ def run_line(job: LineJob) -> LineOutcome:
 
 
 def _without_pings(job: LineJob, accounts: tuple[FileAccount, ...]) -> LineOutcome:
-    """A line none of whose rows is in scope is left out; one whose rows were all rejected is an error of its files."""
+    """A line none of whose rows is in scope is left out, and so is one that is a copy of another; one whose rows were
+    all rejected is an error of its files."""
     rejected = sum(a.rows_rejected for a in accounts)
-    if not rejected:
+    copy = set().union(*(a.reasons for a in accounts)) == {MET_BEFORE}
+    if not rejected or copy:
         return replace(_failed(job, "no ping is in scope", None), accounts=accounts, in_scope=False)
     reasons = sorted(
         {r: n for a in accounts for r, n in a.reasons.items()}.items(), key=lambda item: -item[1]

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -116,9 +117,7 @@ def _with_depth(table: PingTable, log: LineLog) -> PingTable:
         depth[batch.pings[batch.counts == 1]] = batch.columns["depth"][
             : int((batch.counts == 1).sum())
         ]
-    return PingTable(
-        table.time, table.ping, table.ping_logged, table.channels, {**table.columns, "depth": depth}
-    )
+    return replace(table, columns={**table.columns, "depth": depth})
 
 
 def _groups(table: PingTable) -> list[tuple[frozenset[str], list[ChannelSpan]]]:

@@ -7,14 +7,23 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from qa.ingest.line_log import DayChoice, OpenedLine
+from qa.ingest.line_log import MET_BEFORE, DayChoice, OpenedLine
 from qa.ingest.planning import LineTask, LogPlan, open_line, plan_logs
 from qa.model.survey_file import SurveyFile, load_survey_file
 
 if TYPE_CHECKING:
     import pyarrow as pa
 
-__all__ = ["DayChoice", "LineTask", "LogPlan", "OpenedLine", "open_line", "plan_logs", "read_log"]
+__all__ = [
+    "MET_BEFORE",
+    "DayChoice",
+    "LineTask",
+    "LogPlan",
+    "OpenedLine",
+    "open_line",
+    "plan_logs",
+    "read_log",
+]
 
 
 def read_log(path: str | Path, survey: SurveyFile | str | Path | None = None) -> pa.Table:
@@ -62,6 +71,14 @@ def _line_table(line: OpenedLine) -> pa.Table:
         for name in wanted:
             beams[name].append(batch.columns[name])
     rows = np.concatenate(pings) if pings else np.arange(len(table))
+    if pings:
+        without = np.setdiff1d(np.arange(len(table)), rows)
+        rows = np.concatenate([rows, without])
+        for parts in beams.values() if len(without) else ():
+            parts.append(np.full(len(without), np.nan))
+    # beams come in the order of the file, pings stand in the order of the line
+    order = np.argsort(rows, kind="stable")
+    rows = rows[order]
     channel = np.empty(len(table), dtype=object)
     for span in table.channels:
         channel[span.rows] = span.name
@@ -73,5 +90,6 @@ def _line_table(line: OpenedLine) -> pa.Table:
     }
     columns.update({name: values[rows] for name, values in table.columns.items()})
     if pings:
-        columns.update({name: np.concatenate(parts) for name, parts in beams.items()})
+        for name, parts in beams.items():
+            columns[name] = np.concatenate(parts)[order]
     return pa.table(columns)

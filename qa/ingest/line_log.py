@@ -22,6 +22,13 @@ from qa.model.survey_file import SurveyFile
 MESSAGE_SHARE = 0.2
 """Where more than this share of rows repeats the ping before, rows are messages and not pings."""
 
+MET_BEFORE = "a ping that was met before"
+"""Why a row is rejected that stands in another file too."""
+SHUFFLED_SHARE = 0.05
+"""Where times fall at more than this share of rows, the rows are shuffled; a clock that steps back is rarer."""
+STRAY = 86_400_000_000_000
+"""A ping further than this from both neighbours, in nanoseconds, has no time that can be used."""
+
 
 @dataclass(frozen=True, slots=True)
 class DayChoice:
@@ -40,10 +47,15 @@ class DayChoice:
 
 @dataclass(frozen=True, slots=True)
 class FilePart:
-    """What of a file belongs to a line: all its rows, or those whose numbers fall into spans (first, last)."""
+    """What of a file belongs to a line: all its rows, or those whose numbers fall into spans (first, last).
+
+    ``met`` are spans of rows that stand in another line's file too, ``met_in``, and count there.
+    """
 
     probe: FileProbe
     spans: tuple[tuple[int, int], ...] | None = None
+    met: tuple[tuple[int, int], ...] = ()
+    met_in: str = ""
 
 
 @dataclass(slots=True)
@@ -58,6 +70,28 @@ class _Runs:
     rows: list[Integers]
     file: list[Integers]
     columns: list[dict[str, NDArray[np.float64]]]
+
+
+class _Places:
+    """Row numbers in the file of rows by their place in the stream, kept as stretches without a break."""
+
+    def __init__(self) -> None:
+        self._at: list[Integers] = []
+        self._number: list[Integers] = []
+        self.count = 0
+
+    def add(self, numbers: Integers) -> None:
+        """The next rows of the stream."""
+        starts = np.concatenate([[0], np.flatnonzero(np.diff(numbers) != 1) + 1])
+        self._at.append(starts + self.count)
+        self._number.append(numbers[starts])
+        self.count += len(numbers)
+
+    def numbers(self, places: Integers) -> Integers:
+        """Row numbers of places in the stream."""
+        at, number = np.concatenate(self._at), np.concatenate(self._number)
+        stretch = np.searchsorted(at, places, side="right") - 1
+        return number[stretch] + places - at[stretch]
 
 
 class OpenedLine:
@@ -76,6 +110,8 @@ class OpenedLine:
         self._beam_columns: frozenset[str] = frozenset()
         self._counts: Integers = np.zeros(0, dtype=np.int64)
         self._position: Integers = np.zeros(0, dtype=np.int64)
+        self._places = _Places()
+        self._beams_ordered = True
 
     @property
     def name(self) -> str:
@@ -112,17 +148,18 @@ class OpenedLine:
     def beam_batches(self, columns: Collection[str], rows: int = 100_000) -> Iterator[BeamBatch]:
         """Stream beams, whole pings at a time."""
         self.ping_table()
-        names = sorted(columns)
-        if not names or not len(self._counts):
+        asked = sorted(columns)
+        if not asked or not len(self._counts):
             return
+        names = asked if self._beams_ordered else sorted({*asked, "beam"})
         ends = np.cumsum(self._counts)
         run = 0
         held: list[dict[str, NDArray[Any]]] = []
         held_rows, passed = 0, 0
         total = int(ends[-1])
-        for batch in self._spill.batches(names):
-            held.append(batch)
-            held_rows += len(batch[names[0]])
+        for part in self._spill.batches(names):
+            held.append(part)
+            held_rows += len(part[names[0]])
             while held_rows >= rows or passed + held_rows == total:
                 aim = min(passed + max(rows, 1), passed + held_rows)
                 stop = int(np.searchsorted(ends, aim, side="right"))
@@ -136,7 +173,12 @@ class OpenedLine:
                     else held[0]
                 )
                 taken = int(ends[stop - 1]) - passed
-                yield from self._batch(run, stop, {n: whole[n][:taken] for n in names})
+                batch = {n: whole[n][:taken] for n in names}
+                if not self._beams_ordered:
+                    owner = np.repeat(np.arange(stop - run), self._counts[run:stop])
+                    order = np.lexsort((batch["beam"], owner))
+                    batch = {n: batch[n][order] for n in asked}
+                yield from self._batch(run, stop, batch)
                 held = [{n: whole[n][taken:] for n in names}]
                 held_rows, passed, run = held_rows - taken, passed + taken, stop
                 if not held_rows:
@@ -163,6 +205,11 @@ class OpenedLine:
         for at, part in enumerate(self._parts):
             reader = RowReader(part.probe, names)
             self._readers.append(reader)
+            if part.met:
+                count = sum(last - first + 1 for first, last in part.met)
+                reader.account.notes.append(
+                    f"{count} rows stand in {part.met_in} too, value for value; each was counted once, there."
+                )
             self._read_file(at, part, reader, runs, present)
         self._spill.finish()
         self._beam_columns = frozenset(name for name, there in present.items() if there)
@@ -186,19 +233,22 @@ class OpenedLine:
             starts, continues = self._run_starts(
                 rows, last_of=runs if runs.time else None, at=at, beam=_beam_number(rows)
             )
+            self._places.add(rows.numbers)
+            self._note_beam_order(rows, starts, continues)
             self._keep(rows, starts, continues, runs, at)
             self._put_aside(rows, stored, present)
         self._resolve_notes(reader, runs, at)
 
     def _in_scope(self, rows: Rows, part: FilePart, reader: RowReader) -> Rows:
         if part.spans is not None:
-            firsts = np.array([a for a, _ in part.spans])
-            lasts = np.array([b for _, b in part.spans])
-            at = np.searchsorted(firsts, rows.numbers, side="right") - 1
-            mine = (at >= 0) & (rows.numbers <= lasts[np.maximum(at, 0)])
+            mine = _within(rows.numbers, part.spans)
             # Another line's task accounts for the others.
             reader.account.rows_read -= int((~mine).sum())
             rows = rows.take(mine)
+        if part.met:
+            met = _within(rows.numbers, part.met)
+            reader.reject_all(rows.numbers[met], MET_BEFORE)
+            rows = rows.take(~met)
         if self._day is not None and len(rows):
             inside = (rows.time >= self._day[0]) & (rows.time < self._day[1])
             reader.account.rows_out_of_scope += int((~inside).sum())
@@ -233,8 +283,7 @@ class OpenedLine:
             same[0] = False
         following = {key: values[-1] for key, values in now.items()}
         if same.any():
-            for position in np.flatnonzero(same).tolist():
-                reader.reject(int(rows.numbers[position]), "the row before again")
+            reader.reject_all(rows.numbers[same], "the row before again")
             rows = rows.take(~same)
         return rows, following
 
@@ -264,10 +313,25 @@ class OpenedLine:
                 if beam is not None and self._last_beam is not None:
                     same = same and beam[0] > self._last_beam
             continues = bool(same)
-        self._last_beam = None if beam is None else beam[-1]
         return starts, continues
 
     _last_beam: Any = None
+
+    def _note_beam_order(self, rows: Rows, starts: NDArray[np.bool_], continues: bool) -> None:
+        """Find out whether beams stand in the order of their numbers within each ping."""
+        beam = rows.beams.get("beam")
+        if beam is None or not len(beam):
+            return
+        falls = np.zeros(len(beam), dtype=bool)
+        falls[1:] = beam[1:] < beam[:-1]
+        # a ping's first beam may well be lower than the last of the ping before
+        first = np.cumsum(rows.counts) - rows.counts
+        falls[first[starts & (first < len(beam))]] = False
+        if continues and self._last_beam is not None:
+            falls[0] = beam[0] < self._last_beam
+        self._last_beam = beam[-1]
+        if self._beams_ordered and falls.any():
+            self._beams_ordered = False
 
     def _keep(
         self, rows: Rows, starts: NDArray[np.bool_], continues: bool, runs: _Runs, at: int
@@ -322,7 +386,11 @@ class OpenedLine:
         if not times:
             return
         together = np.concatenate(times)
-        step = resolution(together)
+        codes = np.concatenate(
+            [c for c, f in zip(runs.channel, runs.file, strict=True) if len(f) and f[0] == at]
+        )
+        written = reader.probe.times.written
+        step = max(resolution(together[codes == c], written) for c in np.unique(codes).tolist())
         if step >= 1_000_000:
             reader.account.notes.append(f"Times are given to {_step_text(step)}.")
         repeats = int((np.diff(together) == 0).sum())
@@ -371,14 +439,22 @@ class OpenedLine:
             self._drop_duplicates(kept, time, ping, channel, columns, number, file)
             if logged:
                 self._drop_messages(kept, time, ping, channel, file, length)
-        elif logged:
-            merged = self._gathered(time, ping, channel, counts, length, columns, number, file)
+        else:
+            merged = (
+                self._gathered(time, ping, channel, counts, length, columns, number, file)
+                if logged
+                else None
+            )
             if merged is not None:
                 time, ping, channel, counts, length, number, file, columns = merged
                 kept = np.ones(len(time), dtype=bool)
-            self._drop_same_pings(kept, time, ping, channel, number, file, length)
+            else:
+                self._drop_same_pings(kept, time, ping, channel, logged, file, length)
+        order = self._order(time, ping, channel, kept, logged, names, file)
+        if self._rows_of_files is None:
+            self._drop_strays(kept, order, time, channel, file, length)
+            order = order[kept[order]]
         self._finish_accounts(file, length, kept)
-        order = self._order(time, ping, channel, kept, logged, names)
         self._position = np.full(len(kept), -1, dtype=np.int64)
         self._position[order] = np.arange(len(order))
         spans = self._spans(channel[order], names)
@@ -386,8 +462,15 @@ class OpenedLine:
         positions = np.concatenate([np.arange(s.stop - s.start) for s in spans]) if spans else order
         table = {k: v[order] for k, v in columns.items()}
         table = {k: v for k, v in table.items() if not np.isnan(v).all()}
+        written = min(part.probe.times.written for part in self._parts)
+        step = max(resolution(time[order[s.rows]], written) for s in spans)
         return PingTable(
-            time[order], ping[order] if logged else positions.astype(np.int64), logged, spans, table
+            time[order],
+            ping[order] if logged else positions.astype(np.int64),
+            logged,
+            spans,
+            table,
+            step * 1e-9 if step else float("nan"),
         )
 
     def _drop_duplicates(
@@ -413,12 +496,21 @@ class OpenedLine:
         matrix = np.column_stack(
             [time[rows].view(np.float64), *(np.asarray(k[rows], dtype=float) for k in keys)]
         )
-        _, first = np.unique(matrix.view(np.int64), axis=0, return_index=True)
+        _, first, of = np.unique(
+            matrix.view(np.int64), axis=0, return_index=True, return_inverse=True
+        )
         repeated = np.ones(len(rows), dtype=bool)
         repeated[first] = False
-        for at in rows[repeated].tolist():
-            kept[at] = False
-            self._readers[int(file[at])].reject(int(number[at]), "a duplicate of another row", "")
+        elsewhere = file[rows[first[of.ravel()]]] != file[rows]
+        kept[rows[repeated]] = False
+        for at, reader in enumerate(self._readers):
+            mine = repeated & (file[rows] == at)
+            reader.reject_all(number[rows[mine]], "a duplicate of another row")
+            shared = int((mine & elsewhere).sum())
+            if shared:
+                reader.account.notes.append(
+                    f"{shared} rows stand in another file of this line too; each was counted once."
+                )
 
     def _beam_rows(self) -> list[NDArray[Any]]:
         stored = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
@@ -507,22 +599,38 @@ class OpenedLine:
         rank = np.full(int(group.max()) + 1, np.iinfo(np.int64).max)
         np.minimum.at(rank, group, np.arange(len(time)))
         row_order = np.lexsort((arrays["beam"], rank[rows_group]))
+        if (counts == length).all():
+            repeated = np.zeros(len(row_order), dtype=bool)
+            repeated[1:] = np.diff(rows_group[row_order]) == 0
+            for values in arrays.values():
+                here = np.asarray(values[row_order], dtype=float)
+                repeated[1:] &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+            gone = np.sort(row_order[repeated])
+            if len(gone):
+                owner = np.repeat(np.arange(len(time)), counts)[gone]
+                for at, reader in enumerate(self._readers):
+                    mine = gone[file[owner] == at]
+                    reader.reject_all(self._places.numbers(mine), "a duplicate of another row")
+                counts = counts - np.bincount(owner, minlength=len(time))
+                length = counts
+                row_order = row_order[~repeated]
+        self._beams_ordered = True
         spill = Spill()
         spill.append({n: v[row_order] for n, v in arrays.items()})
         spill.finish()
         self._spill = spill
         first = np.sort(np.unique(rank))
-        new_counts = np.bincount(
-            np.searchsorted(first, rank[group]), weights=counts, minlength=len(first)
-        )
-        new_length = np.bincount(
-            np.searchsorted(first, rank[group]), weights=length, minlength=len(first)
-        )
+        merged = np.searchsorted(first, rank[group])
+        new_counts = np.bincount(merged, weights=counts, minlength=len(first))
+        new_length = np.bincount(merged, weights=length, minlength=len(first))
+        # a ping whose beams stand in several files counts, row by row, for each
+        self._rows_of_files = np.bincount(file, weights=length, minlength=len(self._readers))
         self._counts = new_counts.astype(np.int64)
-        for reader in self._readers:
-            reader.account.notes.append(
-                "Beams of one ping stand apart in the file; they were brought together."
-            )
+        for at, reader in enumerate(self._readers):
+            if bool((file == at).any()):
+                reader.account.notes.append(
+                    "Beams of one ping stand apart in the file; they were brought together."
+                )
         return (
             time[first],
             ping[first],
@@ -540,36 +648,73 @@ class OpenedLine:
         time: Integers,
         ping: Integers,
         channel: Integers,
-        number: Integers,
+        logged: bool,
         file: Integers,
         length: Integers,
     ) -> None:
-        """The same ping met again, in this or another file, counts once."""
+        """The same ping met again, in this or another file, counts once.
+
+        A ping is the same where time, number, channel and every beam are; one whose beams differ is kept, and named.
+        """
         order = np.lexsort((np.arange(len(time)), time, ping, channel))
         again = (
             (np.diff(ping[order]) == 0)
             & (np.diff(channel[order]) == 0)
             & (np.diff(time[order]) == 0)
         )
-        repeated = order[1:][again]
-        if not len(repeated):
+        if not again.any():
             return
+        digest = self._digests(len(time))
+        order = np.lexsort((np.arange(len(time)), digest, time, ping, channel))
+        same = np.ones(len(time) - 1, dtype=bool)
+        for key in (digest, time, ping, channel):
+            same &= np.diff(key[order]) == 0
+        repeated = np.sort(order[1:][same])
         kept[repeated] = False
+        start = np.cumsum(length) - length
+        other = int(again.sum()) - len(repeated)
         for at, reader in enumerate(self._readers):
             mine = repeated[file[repeated] == at]
-            if not len(mine):
-                continue
-            reader.account.notes.append(
-                f"{len(mine)} pings were met before; each was counted once."
-            )
-            for run in mine.tolist():
-                for row in range(int(number[run]), int(number[run]) + int(length[run])):
-                    reader.reject(row, "a ping that was met before")
+            if len(mine):
+                reader.account.notes.append(
+                    f"{len(mine)} pings were met before, in this or another file; each was counted once."
+                )
+                places = _spread(start[mine], length[mine])
+                reader.reject_all(self._places.numbers(places), MET_BEFORE)
+            if other and logged and bool((file == at).any()):
+                reader.account.notes.append(
+                    f"{other} pings of this line have the time and number of another but other beams; all were used. If "
+                    "they are of different heads, log a channel."
+                )
+
+    def _digests(self, count: int) -> Integers:
+        """For each run a number that its beams' values give: equal where all of them are."""
+        digest = np.zeros(count, dtype=np.uint64)
+        runs = np.repeat(np.arange(count), self._counts)
+        stored = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
+        passed = 0
+        for batch in self._spill.batches(stored):
+            for weight, name in enumerate(stored, start=1):
+                bits = np.asarray(batch[name], dtype=np.float64).view(np.uint64)
+                mixed = (bits ^ (bits >> np.uint64(29))) * np.uint64(
+                    0x9E3779B97F4A7C15 + 2 * weight
+                )
+                np.add.at(
+                    digest, runs[passed : passed + len(bits)], mixed ^ (mixed >> np.uint64(32))
+                )
+            passed += len(bits)
+        return digest.view(np.int64)
 
     def _finish_accounts(self, file: Integers, length: Integers, kept: NDArray[np.bool_]) -> None:
         for at, reader in enumerate(self._readers):
-            reader.account.rows_used = int(length[(file == at) & kept].sum()) if len(file) else 0
+            used = self._rows_of_files[at] if self._rows_of_files is not None else None
+            if used is None:
+                used = length[(file == at) & kept].sum() if len(file) else 0
+            reader.account.rows_used = int(used)
+            reader.write_out()
             reader.account.rejected_rows.sort(key=lambda r: r.row)
+
+    _rows_of_files: Integers | None = None
 
     def _order(
         self,
@@ -579,26 +724,81 @@ class OpenedLine:
         kept: NDArray[np.bool_],
         logged: bool,
         names: Names,
+        file: Integers,
     ) -> Integers:
         """Runs in channel, then ping order.
 
-        Ping numbers decide only where they bring the times into order: a counter that starts again, or a clock
-        that steps back, leaves the order of the file.
+        Ping numbers decide only where they bring the times into better order: a counter that starts again, or a
+        clock that steps back, leaves the order of the file. Where neither helps, and times fall so often that rows
+        must have been shuffled, the times decide.
         """
         rank = np.array(_ranks(names.channel.names) or [0], dtype=np.int64)
         ordered: list[Integers] = []
         codes = np.unique(channel[kept])
         for code in sorted(codes.tolist(), key=lambda c: int(rank[c]) if c >= 0 else -1):
             rows = np.flatnonzero(kept & (channel == code))
-            falling = (np.diff(ping[rows]) < 0).any() if logged else False
-            if falling and (np.diff(time[rows]) < 0).any():
-                by_ping = rows[np.lexsort((np.arange(len(rows)), ping[rows]))]
-                if not (np.diff(time[by_ping]) < 0).any():
-                    rows = by_ping
-            elif not logged and len(self._parts) > 1:
-                rows = rows[np.argsort(time[rows], kind="stable")]
+            by = ""
+            falls = _falls(time[rows])
+            if falls and logged and (np.diff(ping[rows]) < 0).any():
+                by_ping = rows[np.argsort(ping[rows], kind="stable")]
+                if _falls(time[by_ping]) < falls:
+                    rows, by, falls = by_ping, "ping numbers", _falls(time[by_ping])
+            if falls and (
+                (not logged and len(self._parts) > 1)
+                or (falls > 1 and falls > SHUFFLED_SHARE * (len(rows) - 1))
+            ):
+                rows, by = rows[np.argsort(time[rows], kind="stable")], "times"
+            if by:
+                self._note_order(rows, file, by)
             ordered.append(rows)
         return np.concatenate(ordered) if ordered else np.zeros(0, dtype=np.int64)
+
+    def _note_order(self, rows: Integers, file: Integers, by: str) -> None:
+        for at, reader in enumerate(self._readers):
+            moved = int((np.diff(rows[file[rows] == at]) < 0).sum())
+            if moved:
+                reader.account.notes.append(
+                    f"Pings stand out of order in the file; they were put into the order of their {by}."
+                )
+
+    def _drop_strays(
+        self,
+        kept: NDArray[np.bool_],
+        order: Integers,
+        time: Integers,
+        channel: Integers,
+        file: Integers,
+        length: Integers,
+    ) -> None:
+        """Few pings over a day away from both neighbours, which agree with one another: their times are no times."""
+        stray: list[Integers] = []
+        for code in np.unique(channel[order]).tolist():
+            rows = order[channel[order] == code]
+            there = time[rows]
+            jumps = np.flatnonzero(np.abs(np.diff(there)) > STRAY)
+            for first, last in zip(jumps[:-1].tolist(), jumps[1:].tolist(), strict=True):
+                back = abs(int(there[last + 1]) - int(there[first])) <= STRAY
+                if back and last - first <= 3:
+                    stray.append(rows[first + 1 : last + 1])
+            if len(there) > 2 and len(jumps):
+                if jumps[0] == 0 and there[0] > there[1] and (len(jumps) < 2 or jumps[1] > 1):
+                    stray.append(rows[:1])
+                end = len(there) - 2
+                alone = len(jumps) < 2 or jumps[-2] < end - 1
+                if jumps[-1] == end and there[-1] < there[-2] and alone:
+                    stray.append(rows[-1:])
+        if not stray:
+            return
+        gone = np.unique(np.concatenate(stray))
+        kept[gone] = False
+        start = np.cumsum(length) - length
+        for at, reader in enumerate(self._readers):
+            mine = gone[file[gone] == at]
+            if len(mine):
+                places = _spread(start[mine], length[mine])
+                reader.reject_all(
+                    self._places.numbers(places), "the time is out of order beyond repair"
+                )
 
     def _spans(self, channel: Integers, names: Names) -> tuple[ChannelSpan, ...]:
         if not len(channel):
@@ -645,6 +845,25 @@ def _first_known(
     at = np.minimum.reduceat(known, first)
     inside = at < first + lengths
     return np.where(inside, values[np.minimum(at, len(values) - 1)], np.nan)
+
+
+def _within(numbers: Integers, spans: Sequence[tuple[int, int]]) -> NDArray[np.bool_]:
+    """Which numbers fall into spans (first, last) that rise."""
+    firsts = np.array([a for a, _ in spans])
+    lasts = np.array([b for _, b in spans])
+    at = np.searchsorted(firsts, numbers, side="right") - 1
+    return np.asarray((at >= 0) & (numbers <= lasts[np.maximum(at, 0)]))
+
+
+def _falls(time: Integers) -> int:
+    """How often times fall."""
+    return int((np.diff(time) < 0).sum())
+
+
+def _spread(starts: Integers, lengths: Integers) -> Integers:
+    """Places of stretches, all after one another."""
+    ends = np.cumsum(lengths)
+    return np.repeat(starts + lengths - ends, lengths) + np.arange(int(lengths.sum()))
 
 
 def _shuffled(

@@ -11,8 +11,9 @@ from pathlib import Path, PurePosixPath
 import numpy as np
 
 from qa.ingest.line_log import DayChoice, FilePart, OpenedLine
+from qa.ingest.overlap import met_before
 from qa.ingest.probe import FileProbe, probe
-from qa.ingest.rows import Names, RowReader
+from qa.ingest.rows import Integers, Names, RowReader
 from qa.model.errors import InputError
 from qa.model.findings import InputFile
 from qa.model.survey_file import SurveyFile
@@ -84,14 +85,25 @@ def plan_logs(
     for item in probes:
         by_source[item[1].lines.source].append(item)
     names = _line_names([p.shown for p, _ in by_source["file"]])
-    for (own_probe, _), name in zip(by_source["file"], names, strict=True):
+    met = met_before([p for p, _ in by_source["file"]])
+    for at, ((own_probe, _), name) in enumerate(zip(by_source["file"], names, strict=True)):
         part = FilePart(own_probe)
+        if at in met:
+            part = FilePart(own_probe, met=_stretches(met[at][1]), met_in=met[at][0])
         lines.append(LineTask(name, (own_probe.shown,), (part,), own_probe.size, day))
     for source in ("column", "gap"):
         lines += _split(by_source[source], source, day, failed)
     order = {shown: i for i, (shown, _) in enumerate(found)}
     lines.sort(key=lambda line: (order[line.files[0]], natural(line.name)))
     return LogPlan(tuple(lines), tuple(failed))
+
+
+def _stretches(numbers: Integers) -> tuple[tuple[int, int], ...]:
+    """Rising numbers as spans (first, last)."""
+    breaks = np.flatnonzero(np.diff(numbers) != 1)
+    firsts = numbers[np.concatenate([[0], breaks + 1])]
+    lasts = numbers[np.concatenate([breaks, [len(numbers) - 1]])]
+    return tuple(zip(firsts.tolist(), lasts.tolist(), strict=True))
 
 
 def open_line(task: LineTask, survey: SurveyFile) -> OpenedLine:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -92,20 +92,26 @@ class RowReader:
         self.state = TimeState()
         self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
         self._latest = NO_TIME
+        self._unwritten: set[int] = set()
 
     def batches(self) -> Iterator[Rows]:
         """The file's rows, batch after batch, in file order."""
         for raw in self._raw():
-            yield self._rows(raw)
+            yield self.convert(raw)
         if self.state.leap_seconds:
             self.account.notes.append(
                 f"{self.state.leap_seconds} times lie in a leap second (second 60): taken as that far into the next minute."
             )
 
-    def _raw(self) -> Iterator[RawBatch]:
+    def kinds(self) -> dict[str, pa.DataType]:
+        """The file's own columns that are read, and as what."""
         sources = {b.source: self._kind(b) for b in self.bindings}
         for source in self.probe.times.sources:
             sources[source] = self._time_kind()
+        return sources
+
+    def _raw(self) -> Iterator[RawBatch]:
+        sources = self.kinds()
         opened = self.probe.open()
         if isinstance(opened, TableSource):
             try:
@@ -127,7 +133,8 @@ class RowReader:
         column = COLUMNS[binding.role]
         return pa.float64() if column.kind == "number" else pa.string()
 
-    def _rows(self, raw: RawBatch) -> Rows:
+    def convert(self, raw: RawBatch) -> Rows:
+        """A batch of the file as canonical rows; what is rejected goes into the account."""
         account, n = self.account, raw.length
         account.rows_read += n + len(raw.broken)
         for number, reason, text in raw.broken:
@@ -167,9 +174,34 @@ class RowReader:
         """The latest time met."""
         return self._latest
 
-    def reject(self, number: int, reason: str, text: str = "") -> None:
-        """Count a row as rejected that was taken at first."""
-        self._reject(number, reason, text)
+    def reject_all(self, numbers: Integers, reason: str) -> None:
+        """Count rows as rejected that were taken at first."""
+        account = self.account
+        if not len(numbers):
+            return
+        account.rows_rejected += len(numbers)
+        account.reasons[reason] = account.reasons.get(reason, 0) + len(numbers)
+        room = max(0, KEPT_REJECTS - len(account.rejected_rows))
+        self._unwritten.update(numbers[:room].tolist())
+        account.rejected_rows += [
+            RejectedRow(self.probe.shown, n, reason, "") for n in numbers[:room].tolist()
+        ]
+
+    def write_out(self) -> None:
+        """Look up the words of rows that were rejected after they had passed."""
+        if not self._unwritten:
+            return
+        opened = self.probe.open()
+        try:
+            texts = opened.rows(sorted(self._unwritten))
+        finally:
+            if isinstance(opened, TableSource):
+                opened.close()
+        self.account.rejected_rows = [
+            replace(row, text=texts.get(row.row, "")) if row.row in self._unwritten else row
+            for row in self.account.rejected_rows
+        ]
+        self._unwritten = set()
 
     def _reject(self, number: int, reason: str, text: str) -> None:
         account = self.account

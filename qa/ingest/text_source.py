@@ -98,32 +98,36 @@ class _Counted(io.RawIOBase):
         super().close()
 
 
+def _unreadable(where: str, problem: OSError) -> InputError:
+    return InputError(
+        "The file cannot be read.",
+        where=where,
+        found=problem.strerror or str(problem),
+        advice="Check the path and who may read it.",
+    )
+
+
+def _packing(path: Path) -> str:
+    """How a file is packed, by its first bytes; "" where it is not."""
+    with path.open("rb") as file:
+        magic = file.read(4)
+    if magic[:2] == b"\x1f\x8b":
+        return "gzip"
+    if magic == b"\x28\xb5\x2f\xfd":
+        return "zstd"
+    return "bz2" if magic[:3] == b"BZh" and path.suffix.lower() == ".bz2" else ""
+
+
 def open_bytes(path: Path, where: str) -> IO[bytes]:
     """The file's bytes, unpacked where it is packed."""
     try:
-        suffix = path.suffix.lower()
-        with path.open("rb") as file:
-            magic = file.read(4)
-        kind = (
-            "gzip"
-            if magic[:2] == b"\x1f\x8b"
-            else "zstd"
-            if magic == b"\x28\xb5\x2f\xfd"
-            else "bz2"
-            if magic[:3] == b"BZh" and suffix == ".bz2"
-            else ""
-        )
+        kind = _packing(path)
         if not kind:
             return path.open("rb")
         packed = pa.CompressedInputStream(pa.OSFile(str(path), "rb"), kind)
         return _Counted(packed, path.stat().st_size, where)  # type: ignore[return-value]  # has all that is used of IO
     except OSError as problem:
-        raise InputError(
-            "The file cannot be read.",
-            where=where,
-            found=problem.strerror or str(problem),
-            advice="Check the path and who may read it.",
-        ) from None
+        raise _unreadable(where, problem) from None
 
 
 class _Transcoded:
@@ -293,6 +297,27 @@ class TextSource:
             finally:
                 for future in waiting:
                     future.cancel()
+
+    @property
+    def seekable(self) -> bool:
+        """Whether :meth:`window` can start anywhere: neither packed nor of another encoding."""
+        plain = not self.form.carriage and self.dialect.encoding in ("utf-8", "cp1252")
+        return plain and not _packing(self.path)
+
+    def window(self, kinds: Mapping[str, pa.DataType], at: int, size: int) -> RawBatch:
+        """The whole lines within some bytes of the file. Row numbers count from the first of them."""
+        try:
+            with self.path.open("rb") as file:
+                file.seek(at)
+                data = file.read(size)
+                complete = len(data) < size
+        except OSError as problem:
+            raise _unreadable(self.where, problem) from None
+        start = data.find(b"\n") + 1 if at else 0
+        end = len(data) if complete else data.rfind(b"\n") + 1
+        data = data[start : max(start, end)]
+        data = data if not data or data.endswith(b"\n") else data + b"\n"
+        return self._parse(_Block(data, 0, data.count(b"\n")), kinds)
 
     def rows(self, numbers: Sequence[int]) -> dict[int, str]:
         """Rows by their number in the file, word for word."""

@@ -61,7 +61,8 @@ class TimePlan:
 
     ``kind``: "instant" (a timestamp type), "number" (a count of ``step`` ns since ``origin``), "text", or "parts".
     ``text_form`` is the key of the pattern that dates match. ``offset`` is a fixed offset in ns of times that
-    carry none, ``zone`` a time zone's name, for the rest.
+    carry none, ``zone`` a time zone's name, for the rest. ``written`` is the step of the last digit written, in ns; 0
+    where that is not known.
     """
 
     kind: str
@@ -73,6 +74,7 @@ class TimePlan:
     decimal_comma: bool = False
     rolls_over: bool = False
     notes: tuple[str, ...] = ()
+    written: int = 0
 
     @property
     def sources(self) -> tuple[str, ...]:
@@ -119,6 +121,34 @@ def plan_times(
     InputError
         If there is no time, or its form cannot be told.
     """
+    plan = _plan(bindings, sample, zone, where, stated, decimal_comma)
+    last = sample[plan.bindings[-1].source]
+    if isinstance(last, pa.ChunkedArray):
+        last = last.combine_chunks()
+    if pa.types.is_dictionary(last.type):
+        last = last.cast(last.type.value_type)
+    if pa.types.is_timestamp(last.type) or pa.types.is_time(last.type):
+        return replace(plan, written=_STEPS[last.type.unit])
+    unit = plan.step if plan.kind == "number" else float(SECOND_NS)
+    if pa.types.is_integer(last.type):
+        return replace(plan, written=max(1, round(unit)))
+    if not (pa.types.is_string(last.type) or pa.types.is_large_string(last.type)):
+        return plan
+    texts = _texts(last)
+    if plan.kind == "text" and not any(t.count(":") > 1 or "." in t or "," in t for t in texts):
+        # hours and minutes, or digits without marks: the digits do not tell
+        return plan
+    return replace(plan, written=written_step(texts, unit))
+
+
+def _plan(
+    bindings: tuple[Binding, ...],
+    sample: dict[str, pa.Array],
+    zone: str,
+    where: str,
+    stated: str = "",
+    decimal_comma: bool = False,
+) -> TimePlan:
     by_role = {b.role: b for b in bindings}
     time = by_role.get("time")
     if time is not None and time.unit and not stated:
@@ -864,27 +894,72 @@ def _rolled_in_day(
     return out
 
 
-def resolution(times: Integers) -> int:
-    """The step in ns that all times are multiples of: 1 s, 1 ms and the like; 0 where there are none."""
-    known = times[times != NO_TIME]
-    if not len(known):
+_DECADES = (60 * SECOND_NS, *(10**n for n in range(9, -1, -1)))
+_MEASURED = 200_000
+"""Times that the clock's step is measured on."""
+
+
+def resolution(times: Integers, written: int = 0) -> int:
+    """The clock's step: what the times of one channel are given to.
+
+    Parameters
+    ----------
+    times : ndarray of int64
+        Nanoseconds, in ping order.
+    written : int
+        The step of the last digit that is written, in ns; 0 where that is not known.
+
+    Returns
+    -------
+    int
+        The greatest of 1 min, 1 s, 0.1 s, ... that the usual intervals are multiples of, in ns. Pings at one steady
+        interval tell nothing of the clock: then it is ``written``.
+
+    Examples
+    --------
+    >>> resolution(np.array([0, 0, 0, 1, 1, 1, 2]) * 1_000_000_000)
+    1000000000
+    >>> resolution(np.array([0, 200, 400, 600, 1000]) * 1_000_000, written=1_000_000)
+    1000000
+    """
+    gaps = np.abs(np.diff(times[times != NO_TIME][:_MEASURED]))
+    if not len(gaps):
+        return written
+    values, counts = np.unique(gaps, return_counts=True)
+    usual = values[counts >= 0.01 * counts.max()]
+    moving = usual[usual > 0]
+    if not len(moving):
+        return written
+    step = int(np.gcd.reduce(moving))
+    if len(moving) == len(usual) and not _ticks(gaps, moving, step):
+        return written
+    return max(written, next((decade for decade in _DECADES if step % decade == 0), 1))
+
+
+def _ticks(gaps: Integers, moving: Integers, step: int) -> bool:
+    """Whether intervals show the clock's own step, and not only a steady ping rate with pings left out."""
+    if int(moving.min()) == step:
+        return False
+    if len(moving) > 2:
+        return True
+    # two intervals that take turns are a sonar's, two next to each other without order a clock's
+    turns = float((gaps[2:] == gaps[:-2]).mean()) if len(gaps) > 4 else 1.0
+    return int(moving.max() - moving.min()) == step and turns < 0.9
+
+
+def written_step(texts: list[str], unit: float = SECOND_NS) -> int:
+    """The step of the last digit that texts of times or numbers hold, in ns; 0 where there are none.
+
+    Examples
+    --------
+    >>> written_step(["2026-05-04T10:00:00.25Z", "2026-05-04T10:00:01Z"])
+    10000000
+    """
+    found = [re.search(r"\d[.,](\d+)\s*\D*?(?:[+-]\d\d:?\d\d)?$", t) for t in texts[:2000]]
+    if not found:
         return 0
-    offsets = known - known.min()
-    for step in (
-        60 * SECOND_NS,
-        SECOND_NS,
-        100_000_000,
-        10_000_000,
-        1_000_000,
-        100_000,
-        10_000,
-        1_000,
-        100,
-        10,
-    ):
-        if not (offsets % step).any():
-            return step
-    return 1
+    digits = max(len(m[1]) if m else 0 for m in found)
+    return max(1, round(unit / float(10**digits)))
 
 
 def iso(time: int) -> str:

@@ -47,6 +47,9 @@ class PingTable:
         The other logged ping columns that hold any value, SI, NaN where missing. ``pulse_form`` as its position
         in ``columns.PULSE_FORMS``. ``depth`` and the other beam columns of a log of one row per ping are
         not here: they come with the beams.
+    time_resolution : float
+        The step of the clock as measured, in seconds: 1.0 where times are whole seconds. NaN where neither the
+        intervals nor the digits written tell.
     """
 
     time: NDArray[np.int64]
@@ -54,6 +57,7 @@ class PingTable:
     ping_logged: bool
     channels: tuple[ChannelSpan, ...]
     columns: Mapping[str, Floats]
+    time_resolution: float = float("nan")
 
     def __len__(self) -> int:
         return len(self.time)
