@@ -5,6 +5,7 @@ Every function takes the pings of one line and channel, in order, and gives one 
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 import numpy as np
@@ -67,6 +68,21 @@ def ping_span(time: Times, pings_in_water: float) -> Floats:
 def interval_per_ping(ping_span: Floats, pings_in_water: float) -> Floats:
     """The interval that each ping has to itself: the span shared by the pings in the water. [s]"""
     return ping_span / pings_in_water
+
+
+def running_median(values: Floats, window: int) -> Floats:
+    """Median of the known values in a window around each, cut short at the ends; NaN where none is known."""
+    half = window // 2
+    n = len(values)
+    if not n:
+        return np.zeros(0)
+    padded = np.concatenate([np.full(half, np.nan), values, np.full(half, np.nan)])
+    ordered = np.sort(np.lib.stride_tricks.sliding_window_view(padded, window), axis=1)
+    count = np.sum(~np.isnan(ordered), axis=1)
+    some = np.maximum(count, 1)
+    rows = np.arange(n)
+    median = 0.5 * (ordered[rows, (some - 1) // 2] + ordered[rows, some // 2])
+    return np.where(count > 0, median, np.nan)
 
 
 def typical_interval(interval_per_ping: Floats) -> Floats:
@@ -249,28 +265,51 @@ def speed_from_positions(time: Times, latitude: Floats, longitude: Floats) -> Fl
         NaN outside the first and the last fix used, and everywhere with fewer than two. [m/s]
     """
 
-    def metres(first: NDArray[np.int64], second: NDArray[np.int64]) -> Floats:
-        return np.asarray(
-            ground.distance(latitude[first], longitude[first], latitude[second], longitude[second]),
-            dtype=float,
-        )
-
-    return _speed_between(time, distinct_fixes(latitude, longitude), metres)
+    return spread_over_legs(len(time), *legs(time, latitude, longitude, geodesic))
 
 
 def speed_from_grid(time: Times, easting: Floats, northing: Floats) -> Floats:
     """As :func:`speed_from_positions`, from grid coordinates in metres."""
 
-    def metres(first: NDArray[np.int64], second: NDArray[np.int64]) -> Floats:
-        return np.hypot(easting[second] - easting[first], northing[second] - northing[first])
-
-    return _speed_between(time, distinct_fixes(easting, northing), metres)
+    return spread_over_legs(len(time), *legs(time, easting, northing, straight))
 
 
-def _speed_between(time: Times, fixes: NDArray[np.int64], metres: Any) -> Floats:
-    found = np.full(len(time), np.nan)
+def geodesic(
+    latitude: Floats, longitude: Floats, to_latitude: Floats, to_longitude: Floats
+) -> Floats:
+    """Distance between positions in degrees. [m]"""
+    return np.asarray(ground.distance(latitude, longitude, to_latitude, to_longitude), dtype=float)
+
+
+def straight(easting: Floats, northing: Floats, to_easting: Floats, to_northing: Floats) -> Floats:
+    """Distance between positions of a grid. [m]"""
+    return np.hypot(to_easting - easting, to_northing - northing)
+
+
+def legs(
+    time: Times, first: Floats, second: Floats, metres: Callable[..., Floats]
+) -> tuple[NDArray[np.int64], Floats]:
+    """Legs of at least 10 s between distinct fixes, and the speed over each.
+
+    Parameters
+    ----------
+    time : ndarray of int64, shape (n,)
+        [ns]
+    first, second : ndarray of float64, shape (n,)
+        The two coordinates.
+    metres : callable
+        :func:`geodesic` or :func:`straight`.
+
+    Returns
+    -------
+    ends : ndarray of int64, shape (legs + 1,)
+        Rows at which the legs begin and end; empty where there is none.
+    speed : ndarray of float64, shape (legs,)
+        [m/s]
+    """
+    fixes = distinct_fixes(first, second)
     if len(fixes) < 2:
-        return found
+        return fixes[:0], np.zeros(0)
     seconds = (time[fixes] - time[0]) / 1e9
     kept = [0]
     while True:
@@ -278,13 +317,21 @@ def _speed_between(time: Times, fixes: NDArray[np.int64], metres: Any) -> Floats
         if following <= kept[-1] or following >= len(seconds):
             break
         kept.append(following)
-    if len(kept) < 2:
-        return found
-    used = fixes[kept]
-    between = metres(used[:-1], used[1:]) / np.diff(seconds[kept])
-    leg = np.searchsorted(used, np.arange(len(time)), side="right") - 1
-    inside = (leg >= 0) & (np.arange(len(time)) <= used[-1])
-    found[inside] = between[np.minimum(leg[inside], len(between) - 1)]
+    ends = fixes[kept]
+    if len(ends) < 2:
+        return ends[:0], np.zeros(0)
+    a, b = ends[:-1], ends[1:]
+    speed: Floats = metres(first[a], second[a], first[b], second[b]) / np.diff(seconds[kept])
+    return ends, speed
+
+
+def spread_over_legs(n: int, ends: NDArray[np.int64], values: Floats) -> Floats:
+    """Each leg's value at each of its rows; NaN outside the first and the last leg."""
+    found = np.full(n, np.nan)
+    if len(values):
+        at = np.arange(ends[0], ends[-1] + 1)
+        leg = np.searchsorted(ends, at, side="right") - 1
+        found[at] = values[np.minimum(leg, len(values) - 1)]
     return found
 
 

@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from qa.engine import platform, soundings
+from qa.engine import alongline, platform, sonar_equation, soundings
 from qa.engine.quantities import MULTIBEAM, SIDE_SCAN, SINGLE_BEAM, as_logged, quantity
 from qa.physics import beams, echoes, hits, pulse, rays, uncertainty, water
 
@@ -90,6 +90,14 @@ quantity(
     "sound_speed", speed_of_cast, unit="m/s", about="Speed of sound at the transducer, of the cast."
 )
 quantity("cast_sound_speed", speed_of_cast, unit="m/s")
+quantity(
+    "sound_speed_of_water",
+    sound_speed_from_water,
+    unit="m/s",
+    needs=("logged(temperature)", "salinity"),
+    source="UNESCO 44, Del Grosso or Marczak, by the water",
+    formula="c(T, S)",
+)
 quantity(
     "mean_sound_speed",
     mean_speed_of_cast,
@@ -290,29 +298,32 @@ quantity(
 quantity("turn", platform.turn, unit="deg", whole_line=True)
 
 
-def turn_spread(turn: Any, outermost: Any) -> Any:
-    """Ground by which the outermost beam's pings are pulled apart by turning, along the track."""
-    return np.abs(outermost) * np.radians(turn)
-
-
 quantity(
-    "turn_spread",
-    turn_spread,
+    "outer_distance",
+    as_logged,
     unit="m",
-    needs=("turn", "greatest(abs(across_distance))"),
+    needs=("greatest(abs(across_distance))",),
     kinds=_ECHO_SOUNDERS,
-    formula="x·Δψ",
+    about="Distance across the track of the outermost accepted beam.",
 )
 quantity(
-    "turn_spread",
-    turn_spread,
+    "outer_distance",
+    beams.ground_range,
     unit="m",
-    needs=("turn", "farthest_range"),
+    needs=("farthest_range", "altitude"),
     kinds=(SIDE_SCAN,),
-    formula="R·Δψ",
+    about="Distance across the track of the farthest ground.",
 )
 quantity(
-    "widest_footprint_along",
+    "outer_spacing",
+    hits.outer_ping_spacing,
+    unit="m",
+    needs=("ping_spacing", "outer_distance", "turn"),
+    formula="V·t + x·Δψ",
+    source="C-13 ch. 4 §2.3.7; turn ours",
+)
+quantity(
+    "outer_footprint_along",
     as_logged,
     unit="m",
     needs=("greatest(footprint_along)",),
@@ -322,35 +333,14 @@ quantity(
 # Echoes
 
 
-def absorption(frequency: Any, temperature: Any = 10.0, salinity: Any = 35.0) -> Any:
-    """Absorption of sound in the water, per metre; 10 °C and salinity 35 where they are not known."""
-    return water.absorption_francois_garrison(frequency, temperature, salinity, 0.0)
-
-
-def receiver_bandwidth(pulse_length: Any, pulse_form: Any = 0.0, bandwidth: Any = np.nan) -> Any:
-    """Band that the receiver must let through: of a CW pulse the inverse of its length, of an FM pulse its sweep."""
-    modulated = np.asarray(pulse_form == "FM" if isinstance(pulse_form, str) else pulse_form == 1.0)
-    return np.where(modulated, bandwidth, 1.0 / np.asarray(pulse_length, dtype=float))
-
-
-def matched_gain(pulse_length: Any, receiver_bandwidth: Any) -> Any:
-    """What the matched filter gains: nothing for a CW pulse, whose band times length is one."""
-    return np.maximum(echoes.processing_gain(receiver_bandwidth, pulse_length), 0.0)
-
-
-def incidence_angle(farthest_range: Any, altitude: Any) -> Any:
-    """Angle at which sound meets a flat seabed at the farthest range."""
-    return beams.beam_angle_from_range(farthest_range, altitude)
-
-
 quantity(
     "absorption",
-    absorption,
+    sonar_equation.absorption,
     unit="dB/m",
     source="Francois & Garrison 1982",
     assumes="absorption in water of 10 °C and salinity 35 where temperature or salinity are not known",
 )
-quantity("receiver_bandwidth", receiver_bandwidth, unit="Hz", source="C-13 eq. 3.10")
+quantity("receiver_bandwidth", sonar_equation.receiver_bandwidth, unit="Hz", source="C-13 eq. 3.10")
 quantity(
     "noise_level",
     lambda frequency, wind_speed, bandwidth: echoes.noise_level(
@@ -367,39 +357,66 @@ quantity(
     unit="dB",
     source="Urick, rectangular face",
 )
-quantity("processing_gain", matched_gain, unit="dB", source="Lurton")
-quantity("incidence_angle", incidence_angle, unit="deg", formula="acos(z/R)")
-_MARGIN_NEEDS = (
-    "source_level",
-    "farthest_range",
-    "incidence_angle",
-    "absorption",
-    "noise_level",
-    "directivity_index",
-    "beamwidth_along",
-    "beamwidth_across",
-    "range_resolution",
-    "detection_threshold",
+quantity("processing_gain", sonar_equation.matched_gain, unit="dB", source="Lurton")
+quantity(
+    "wanted_range",
+    as_logged,
+    unit="m",
+    needs=("farthest_range",),
+    kinds=(SIDE_SCAN,),
+    about="Farthest range from which an echo is wanted: a side-scan's range scale.",
 )
 quantity(
+    "wanted_range",
+    as_logged,
+    unit="m",
+    needs=("greatest(slant_range)",),
+    kinds=_ECHO_SOUNDERS,
+    about="Farthest range from which an echo is wanted: of the farthest accepted beam.",
+)
+quantity(
+    "incidence_angle",
+    beams.beam_angle_from_range,
+    unit="deg",
+    needs=("wanted_range", "altitude"),
+    about="Angle at which sound meets a flat seabed at the farthest wanted range.",
+    formula="acos(z/R)",
+)
+_SONAR_EQUATION = (
+    *("source_level", "wanted_range", "incidence_angle", "absorption", "noise_level"),
+    *("directivity_index", "beamwidth_along", "beamwidth_across", "range_resolution"),
+    *("detection_threshold", "processing_gain", "backscatter_normal", "backscatter_oblique"),
+)
+_HEARD = ("source_level", "altitude", "least_margin", *_SONAR_EQUATION[3:])
+quantity(
     "echo_margin",
-    echoes.seabed_echo_margin,
+    sonar_equation.seabed_margin,
     unit="dB",
-    needs=(*_MARGIN_NEEDS, "processing_gain", "backscatter_normal", "backscatter_oblique"),
+    needs=_SONAR_EQUATION,
     source="C-13 eqs. 3.4–3.16",
 )
 quantity(
     "target_margin",
-    echoes.target_echo_margin,
+    sonar_equation.target_margin,
     unit="dB",
-    needs=(
-        *_MARGIN_NEEDS,
-        "target_strength",
-        "processing_gain",
-        "backscatter_normal",
-        "backscatter_oblique",
-    ),
+    needs=(*_SONAR_EQUATION, "target_strength"),
     source="C-13 eqs. 3.4–3.16",
+)
+quantity(
+    "heard_range",
+    sonar_equation.seabed_heard_range,
+    unit="m",
+    needs=_HEARD,
+    source="C-13 eqs. 3.4–3.16",
+    formula="the root of echo_margin = least_margin",
+)
+quantity(
+    "target_heard_range",
+    sonar_equation.target_heard_range,
+    unit="m",
+    needs=(*_HEARD, "target_strength"),
+    source="C-13 eqs. 3.4–3.16",
+    formula="the root of target_margin = least_margin",
 )
 
 # Soundings
@@ -411,6 +428,15 @@ quantity(
     needs=("nearest_vertical(height)",),
     whole_line=True,
     kinds=_ECHO_SOUNDERS,
+)
+quantity(
+    "height_around",
+    lambda height: alongline.running_median(height, soundings.ALONG_WINDOW),
+    unit="m",
+    needs=("nearest_vertical(height)",),
+    whole_line=True,
+    kinds=_ECHO_SOUNDERS,
+    about="Median of the heights over the seabed of the 15 pings around.",
 )
 quantity("multiple_echo", soundings.multiple_echo, unit="1", whole_line=True)
 quantity("along_spike", soundings.along_spike, unit="1", whole_line=True)
@@ -518,43 +544,50 @@ for _from, _function, _needs in (
 quantity(
     "ping_number_step", platform.number_step, unit="1", needs=("logged(ping)",), whole_line=True
 )
+_SETTINGS = tuple(
+    f"logged({name})"
+    for name in (
+        *("frequency", "bandwidth", "pulse_length", "pulse_form"),
+        *("range_scale", "source_level", "beamwidth_along", "beamwidth_across"),
+    )
+)
 quantity(
     "settings_changed",
     platform.settings_changed,
     unit="1",
-    needs=tuple(
-        f"logged({n})"
-        for n in (
-            "frequency",
-            "bandwidth",
-            "pulse_length",
-            "pulse_form",
-            "range_scale",
-            "source_level",
-            "beamwidth_along",
-            "beamwidth_across",
-        )
-    ),
+    needs=_SETTINGS,
+    any_of=_SETTINGS,
     whole_line=True,
+)
+_MOTION = ("logged(roll)", "logged(pitch)", "logged(heave)")
+quantity(
+    "roll_rate",
+    platform.rate,
+    unit="deg/s",
+    needs=("logged(roll)", "ping_interval", "typical_interval"),
+    whole_line=True,
+    about="How fast the vessel rolls from each ping to the next.",
 )
 quantity(
     "motion_share",
     platform.motion_share,
     unit="1",
     needs=(
-        "logged(roll)",
-        "logged(pitch)",
-        "logged(heave)",
+        *_MOTION,
+        "roll_rate",
         "roll_limit",
         "pitch_limit",
         "heave_limit",
+        "roll_rate_limit",
     ),
+    any_of=_MOTION,
 )
 quantity(
     "motion_frozen",
     platform.motion_frozen_seconds,
     unit="s",
-    needs=("time", "logged(roll)", "logged(pitch)", "logged(heave)"),
+    needs=("time", *_MOTION),
+    any_of=_MOTION,
     whole_line=True,
 )
 quantity(
@@ -571,7 +604,22 @@ quantity(
     needs=("time", "easting", "northing", "logged(speed)"),
     whole_line=True,
 )
+quantity(
+    "speed_disagreement",
+    platform.speed_disagreement,
+    unit="m/s",
+    needs=("time", "latitude", "longitude", "logged(speed)"),
+    whole_line=True,
+)
+quantity(
+    "speed_disagreement",
+    platform.speed_disagreement_on_grid,
+    unit="m/s",
+    needs=("time", "easting", "northing", "logged(speed)"),
+    whole_line=True,
+)
 quantity("fix_speed", platform.fix_speed, unit="m/s", whole_line=True)
+quantity("fix_speed", platform.fix_speed_on_grid, unit="m/s", whole_line=True)
 quantity(
     "bottom_track_fault",
     platform.bottom_track_fault,

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from typing import Any
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -36,6 +36,16 @@ from qa.model.log import ChannelSpan, Floats, LineLog, PingTable
 from qa.model.survey_file import SurveyFile
 from qa.model.units import Unit, readable
 
+
+class Profile(Protocol):
+    """Speed of sound down the water."""
+
+    @property
+    def depth(self) -> Floats: ...
+    @property
+    def sound_speed(self) -> Floats: ...
+
+
 EXTRA = (
     *("ping_interval", "ping_span", "listening_time", "bottom_travel_time", "range_resolution"),
     *("speed", "ping_spacing", "distance", "altitude", "nearest_vertical(depth)", "least(depth)"),
@@ -51,6 +61,7 @@ def evaluate_line(
     sheet: RuleSheet,
     files: Sequence[str] = (),
     rows: int = BATCH_ROWS,
+    cast: Profile | None = None,
 ) -> LineResult:
     """Everything about one line.
 
@@ -66,6 +77,8 @@ def evaluate_line(
         The line's files, as the user wrote them.
     rows : int
         Beams a batch holds, about; no result depends on it.
+    cast : Profile, optional
+        Speed of sound down the water, as the survey file's profile says it.
     """
     table = log.ping_table()
     kind, assumed_kind = line_kind(log, survey)
@@ -77,9 +90,9 @@ def evaluate_line(
     for present, channels in _groups(table):
         available = Available(
             kind,
-            present | {"time", "ping"},
+            present | ({"time", "ping"} if table.ping_logged else {"time"}),
             beam_columns,
-            {**survey.stated, "kind": kind, **_depth_from(survey)},
+            {**survey.stated, **_cast(cast), "kind": kind, **_depth_from(survey)},
             log.grain == "ping",
             assumed_kind,
         )
@@ -104,6 +117,10 @@ def line_kind(log: LineLog, survey: SurveyFile) -> tuple[str, bool]:
     if log.beam_columns & {"depth", "slant_range", "two_way_time"}:
         return "single-beam", True
     return "side-scan", True
+
+
+def _cast(cast: Profile | None) -> dict[str, Any]:
+    return {} if cast is None else {"cast": cast}
 
 
 def _depth_from(survey: SurveyFile) -> dict[str, str]:
@@ -176,7 +193,7 @@ class _Assembly:
                 if (node.grain == "ping" and key != "time" and "logged(" not in key) or (
                     node.grain == "survey"
                     and node.way in ("stated", "recipe", "assumed")
-                    and not isinstance(computed.values[key], str)
+                    and isinstance(computed.values[key], float | int | np.number | np.ndarray)
                     and key not in self.columns
                 ):
                     self._merge(computed, key, computed.values[key], node.unit)
@@ -284,6 +301,9 @@ class _Assembly:
         sections = self._sections(rule, planned, series, assessed, within=not out)
         stray = missed - sum(s.pings_missed for s in sections)
         reason = self._reason(rule, assessed, missed, stray, out)
+        absent = sorted({name for p in planned for name in p.absent})
+        if absent:
+            reason += f"; not in the log: {', '.join(absent)}"
         return self._line_rule(rule, verdict, reason, series, stray), sections
 
     def _reason(self, rule: Rule, assessed: int, missed: int, stray: int, out: bool) -> str:
@@ -371,7 +391,7 @@ class _Assembly:
     def _metres(self, mask: NDArray[np.bool_]) -> float | None:
         if self.spacing is None or np.isnan(self.spacing).all():
             return None
-        return float(np.nansum(np.where(mask, self.spacing, 0.0)))
+        return float(np.nansum(np.where(mask, np.maximum(self.spacing, 0.0), 0.0)))
 
     def _sections(
         self,
@@ -526,8 +546,8 @@ class _Assembly:
                 here = here[at] if np.ndim(here) else here
             if here is None:
                 continue
-            if isinstance(here, str):
-                found.append(Evidence(key, here, "", None, node.origin))
+            if not isinstance(here, float | int | np.number):
+                found.append(Evidence(key, str(here), "", None, node.origin))
                 continue
             recipe = node.recipe
             formula = (
@@ -560,7 +580,7 @@ class _Assembly:
         first = self.table.channels[0].rows if self.table.channels else slice(0, 0)
         length = None
         if self.spacing is not None and not np.isnan(self.spacing).all():
-            length = float(np.nansum(self.spacing[first]))
+            length = float(np.nansum(np.maximum(self.spacing[first], 0.0)))
         origins: dict[str, str] = {}
         for computed in self.done:
             for key, node in computed.plan.nodes.items():

@@ -87,6 +87,7 @@ class PlannedRule:
     """A rule with what its verdict rests on, or what is missing for it.
 
     ``by_ping``: its condition is decided ping by ping; where it is false the ping is exempt.
+    ``absent``: required columns that the log does not hold at all.
     """
 
     rule: Rule
@@ -96,6 +97,7 @@ class PlannedRule:
     timed: frozenset[str]
     reads: tuple[str, ...]
     by_ping: bool = False
+    absent: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -201,9 +203,7 @@ class Resolver:
             own = key in COLUMNS or quantities.is_stated_key(key)
             nearest = max(missing, key=lambda m: m.had, default=_Missing((key,)))
             names = (key,) if own and not nearest.had else nearest.names
-            raise _Missing(
-                names, cyclic=any(m.cyclic for m in missing) and not own, had=nearest.had
-            )
+            raise _Missing(names, cyclic=any(m.cyclic for m in missing), had=nearest.had)
         return min(candidates, key=lambda c: _RANK[c.origin])
 
     def _usable(self, recipe: Recipe) -> bool:
@@ -259,6 +259,8 @@ class Resolver:
                 else:
                     missing += error.names
                     cyclic, had = cyclic or error.cyclic, had + error.had
+        if recipe.any_of and absent.issuperset(recipe.any_of):
+            missing += [name.removeprefix("logged(").rstrip(")") for name in recipe.any_of]
         if missing:
             raise _Missing(missing, cyclic, had + sum(_RANK[n.origin] < 2 for n in inputs))
         grain = grain_of(*(n.grain for n in inputs))
@@ -497,7 +499,7 @@ def _after_reduction(
 
 def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
     none: tuple[str, ...] = ()
-    if rule.requirement is None:
+    if rule.requirement is None and not rule.columns:
         return PlannedRule(rule, False, True, none, frozenset(), none)
     by_ping = False
     try:
@@ -508,6 +510,8 @@ def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
                 roots += [n.key for n in conditions]
             elif rule.when.run({n.key: n.value for n in conditions}) != 1.0:
                 return PlannedRule(rule, False, False, none, frozenset(), none)
+        if rule.requirement is None:
+            return _of_columns(rule, resolver, roots, by_ping)
         needed = resolver.all_of(rule.requirement.names)
     except _Missing as missing:
         return PlannedRule(rule, False, True, missing.names, frozenset(), none)
@@ -528,6 +532,21 @@ def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
     timed = frozenset(rests_on) & TIMED if "clock_fault" not in rests_on else frozenset()
     beam = grain_of(*(n.grain for n in needed)) == "beam"
     return PlannedRule(rule, beam, True, none, timed, tuple(n.key for n in needed), by_ping)
+
+
+def _of_columns(rule: Rule, resolver: Resolver, roots: list[str], by_ping: bool) -> PlannedRule:
+    """A rule that requires columns: what each ping has of them."""
+    reads, absent = [], []
+    for name in rule.columns:
+        beam = name in resolver.available.beam_columns
+        try:
+            node = resolver.resolve(f"greatest(logged({name}))" if beam else f"logged({name})")
+        except _Missing:
+            absent.append(name)
+            continue
+        reads.append(node.key)
+    roots += reads
+    return PlannedRule(rule, False, True, (), frozenset(), tuple(reads), by_ping, tuple(absent))
 
 
 def closure(names: Iterable[str], nodes: Mapping[str, Node]) -> list[str]:

@@ -5,13 +5,21 @@ Every function takes the pings of one line and channel, in order, and gives one 
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from qa.engine.alongline import distinct_fixes
-from qa.physics import ground
+from qa.engine.alongline import (
+    distinct_fixes,
+    geodesic,
+    legs,
+    running_median,
+    spread_over_legs,
+    straight,
+)
 
 Floats = NDArray[np.float64]
 Times = NDArray[np.int64]
@@ -20,6 +28,8 @@ FROZEN_SECONDS = 10.0
 """A value that stays the same to the last digit for so long has stopped, where it otherwise does not."""
 FROZEN_FACTOR = 5.0
 """... and for so many times as long as nineteen in twenty of the line's other runs of one value."""
+FEWEST_FROZEN = 10
+TURN_WINDOW = 5
 SLOWEST_MOVING = 0.5
 
 
@@ -57,7 +67,8 @@ def seconds_unchanged(time: Times, *values: Floats) -> Floats:
     Returns
     -------
     ndarray of float64, shape (n,)
-        Duration of the run that the ping belongs to; NaN where a value is missing. [s]
+        Duration of the run that the ping belongs to, no interval counted for more than three times the
+        line's median; NaN where a value is missing. [s]
     """
     n = len(time)
     if not n:
@@ -71,14 +82,20 @@ def seconds_unchanged(time: Times, *values: Floats) -> Floats:
     run = np.concatenate([[0], np.cumsum(~same)])
     first = np.searchsorted(run, run, side="left")
     last = np.searchsorted(run, run, side="right") - 1
-    duration = (time[last] - time[first]) / 1e9
+    step = np.maximum(np.diff(time) / 1e9, 0.0)
+    # A stop of the logging has kept nothing the same.
+    usual = float(np.median(step[step > 0])) if (step > 0).any() else 0.0
+    elapsed = np.concatenate([[0.0], np.cumsum(np.minimum(step, 3.0 * usual))])
+    duration = elapsed[last] - elapsed[first]
     return np.where(known, duration, np.nan)
 
 
 def frozen_seconds(time: Times, *values: Floats) -> Floats:
     """As :func:`seconds_unchanged`, but 0 where values of this line often stay so long: they are coarse, not stuck.
 
-    What is usual is the length that 95 % of the line's runs do not exceed.
+    What is usual is the length that 95 % of the line's runs do not exceed, or of fewer than twenty the second
+    longest. NaN on a line whose values never change: whether they are stuck cannot be told. A run of fewer than ten pings is
+    0 too: a gap between two pings that happen to agree has stopped nothing.
     """
     unchanged = seconds_unchanged(time, *values)
     known = unchanged[~np.isnan(unchanged)]
@@ -86,11 +103,14 @@ def frozen_seconds(time: Times, *values: Floats) -> Floats:
         return unchanged
     starts = np.concatenate([[True], np.diff(unchanged) != 0])
     runs = unchanged[starts & ~np.isnan(unchanged)]
-    usual = float(np.quantile(runs, 0.95)) if len(runs) >= 20 else 0.0
+    if len(runs) < 2:
+        return np.full(len(unchanged), np.nan)
+    usual = float(np.quantile(runs, 0.95) if len(runs) >= 20 else np.sort(runs)[-2])
+    first = np.maximum.accumulate(np.where(starts, np.arange(len(starts)), 0))
+    pings = np.bincount(first, minlength=len(starts))[first]
     with np.errstate(invalid="ignore"):
-        return np.where(
-            np.isnan(unchanged), np.nan, np.where(unchanged > FROZEN_FACTOR * usual, unchanged, 0.0)
-        )
+        stuck = (unchanged > FROZEN_FACTOR * usual) & (pings >= FEWEST_FROZEN)
+        return np.where(np.isnan(unchanged), np.nan, np.where(stuck, unchanged, 0.0))
 
 
 def motion_frozen_seconds(
@@ -120,31 +140,76 @@ def motion_share(
     roll: Any = np.nan,
     pitch: Any = np.nan,
     heave: Any = np.nan,
+    roll_rate: Any = np.nan,
     roll_limit: Any = np.nan,
     pitch_limit: Any = np.nan,
     heave_limit: Any = np.nan,
+    roll_rate_limit: Any = np.nan,
 ) -> Any:
-    """The largest of roll, pitch and heave, each as a share of its limit, of those that are logged."""
+    """The largest of roll, pitch, heave and roll rate, each as a share of its limit, of those that are logged."""
     with np.errstate(invalid="ignore"):
         return np.fmax(
             np.fmax(np.abs(roll) / roll_limit, np.abs(pitch) / pitch_limit),
-            np.abs(heave) / heave_limit,
+            np.fmax(np.abs(heave) / heave_limit, roll_rate / roll_rate_limit),
         )
 
 
+def rate(value: Floats, ping_interval: Floats, typical_interval: Floats) -> Floats:
+    """How fast a value changes from each ping to the next, in size; 0 for the last. [unit/s]
+
+    No interval counts for less than half the typical one: a clock that stepped back makes nothing turn faster.
+    """
+    found = np.zeros(len(value))
+    with np.errstate(invalid="ignore", divide="ignore"):
+        seconds = np.fmax(ping_interval, 0.5 * typical_interval)[:-1]
+        steps = np.abs(np.diff(value)) / seconds
+    found[:-1] = np.where(np.isfinite(steps), steps, 0.0)
+    return found
+
+
 def fix_speed(time: Times, latitude: Floats, longitude: Floats) -> Floats:
-    """Speed that each new fix means since the fix before it; 0 where the position is none or not new. [m/s]"""
-    found = np.where(np.isnan(latitude) | np.isnan(longitude), np.nan, 0.0)
-    fixes = distinct_fixes(latitude, longitude)
+    """Speed that each new fix means since the fix before it; 0 where the position is not new. [m/s]"""
+    return _fix_speed(time, latitude, longitude, geodesic)
+
+
+def fix_speed_on_grid(time: Times, easting: Floats, northing: Floats) -> Floats:
+    """As :func:`fix_speed`, from grid coordinates. [m/s]"""
+    return _fix_speed(time, easting, northing, straight)
+
+
+def _fix_speed(time: Times, first: Floats, second: Floats, metres: Callable[..., Floats]) -> Floats:
+    found = np.where(np.isnan(first) | np.isnan(second), np.nan, 0.0)
+    fixes = distinct_fixes(first, second)
     if len(fixes) < 2:
         return found
-    metres = ground.distance(
-        latitude[fixes[:-1]], longitude[fixes[:-1]], latitude[fixes[1:]], longitude[fixes[1:]]
-    )
+    a, b = fixes[:-1], fixes[1:]
     # A fix is no finer in time than the pings that carry it: never less than a second is counted.
     seconds = np.maximum(np.diff(time[fixes]) / 1e9, 1.0)
-    found[fixes[1:]] = metres / seconds
+    found[b] = metres(first[a], second[a], first[b], second[b]) / seconds
     return found
+
+
+def speed_disagreement(time: Times, latitude: Floats, longitude: Floats, speed: Floats) -> Floats:
+    """Mean of the logged speed over each leg of 10 s or more, less the speed of its two fixes, in size. [m/s]"""
+    return _disagreement(time, speed, *legs(time, latitude, longitude, geodesic))
+
+
+def speed_disagreement_on_grid(
+    time: Times, easting: Floats, northing: Floats, speed: Floats
+) -> Floats:
+    """As :func:`speed_disagreement`, from grid coordinates. [m/s]"""
+    return _disagreement(time, speed, *legs(time, easting, northing, straight))
+
+
+def _disagreement(time: Times, speed: Floats, ends: NDArray[np.int64], of_fixes: Floats) -> Floats:
+    found = np.full(len(of_fixes), np.nan)
+    for leg, (a, b) in enumerate(pairwise(ends)):
+        seconds = np.diff(time[a : b + 1]) / 1e9
+        run = np.nansum(speed[a:b] * seconds)
+        known = seconds[~np.isnan(speed[a:b])].sum()
+        if known > 0.5 * seconds.sum() > 0:
+            found[leg] = abs(run / known - of_fixes[leg])
+    return spread_over_legs(len(time), ends, found)
 
 
 def settings_changed(
@@ -182,12 +247,18 @@ def bottom_track_fault(time: Times, altitude: Floats, range_scale: Any = np.inf)
         found[altitude > range_scale] = 3.0
         found[frozen >= FROZEN_SECONDS] = 2.0
         found[altitude <= 0.0] = 1.0
-    found[np.isnan(altitude)] = 1.0
+    missing = np.isnan(altitude)
+    # Logged on fewer than half the pings it is not lost in between, only logged more slowly.
+    found[missing] = 1.0 if missing.mean() < 0.5 else np.nan
     return found
 
 
 def turn(heading: Floats) -> Floats:
-    """Change of heading from each ping to the next; 0 for the last. [deg]"""
-    change = np.zeros(len(heading))
-    change[:-1] = np.abs((np.diff(heading) + 180.0) % 360.0 - 180.0)
-    return change
+    """Change of heading from each ping to the next, in size: the median of the five changes around it. [deg]
+
+    A heading's noise goes to and fro from ping to ping, and hardly outlives the median; a turn goes on.
+    """
+    if len(heading) < 2:
+        return np.zeros(len(heading))
+    change = np.append((np.diff(heading) + 180.0) % 360.0 - 180.0, np.nan)
+    return np.abs(running_median(change, TURN_WINDOW))

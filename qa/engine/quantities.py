@@ -26,7 +26,7 @@ class Recipe:
     """One way to a quantity.
 
     ``needs`` name its inputs, quantities or reductions such as "greatest(slant_range)"; ``optional`` those that
-    may be missing. ``kinds`` are the sonars that it is for, none meaning all; ``only`` says the same of other choices, such as
+    may be missing, of which one in ``any_of`` must be had. ``kinds`` are the sonars that it is for, none meaning all; ``only`` says the same of other choices, such as
     ``{"depth_from": "datum"}``. ``first`` puts it before every
     other recipe, whatever its inputs' origin. ``whole_line`` functions see all pings of a line and channel at
     once; ``within_ping`` functions also take ``groups``, how a batch's beams fall into pings. ``assumes`` is what taking this way supposes, listed on the report; a ``guess`` ranks as assumed.
@@ -37,7 +37,9 @@ class Recipe:
     unit: Unit
     needs: tuple[str, ...]
     parameters: tuple[str, ...]
+    positional: bool
     optional: tuple[str, ...]
+    any_of: tuple[str, ...]
     kinds: tuple[str, ...]
     only: tuple[tuple[str, str], ...]
     first: bool
@@ -63,6 +65,7 @@ def quantity(
     kinds: tuple[str, ...] = (),
     only: Mapping[str, str] | None = None,
     first: bool = False,
+    any_of: tuple[str, ...] = (),
     whole_line: bool = False,
     within_ping: bool = False,
     assumes: str = "",
@@ -84,15 +87,18 @@ def quantity(
         Unit of the result.
     needs : tuple of str, optional
         Names of the inputs, in the order of the function's parameters; the parameters' own names if left out.
+        A function of ``*args`` takes any number, none of which may be missing.
     """
+    every = inspect.signature(function).parameters.values()
+    positional = any(p.kind is p.VAR_POSITIONAL for p in every)
     parameters = [
         p
-        for p in inspect.signature(function).parameters.values()
+        for p in every
         if p.kind in (p.POSITIONAL_ONLY, p.POSITIONAL_OR_KEYWORD)
         and not (within_ping and p.name == "groups")
     ]
     names = needs if needs is not None else tuple(p.name for p in parameters)
-    if len(names) > len(parameters):
+    if len(names) > len(parameters) and not positional:
         raise ValueError(f"{name} is given more inputs than its function takes.")
     optional = tuple(n for n, p in zip(names, parameters, strict=False) if p.default is not p.empty)
     lines = (inspect.getdoc(function) or "").strip().splitlines()
@@ -102,7 +108,9 @@ def quantity(
         conversion(unit).unit,
         names,
         tuple(p.name for p in parameters[: len(names)]),
+        positional,
         optional,
+        any_of,
         kinds,
         tuple((only or {}).items()),
         first,
@@ -142,6 +150,7 @@ _TEXTS: dict[str, tuple[str, ...]] = {
     "beam_angle_from": ("vertical", "array", "horizontal"),
     "receive_array": ("flat", "curved"),
     "depth_from": ("waterline", "transducer", "datum"),
+    "focus": ("none", "dynamic"),
 }
 
 

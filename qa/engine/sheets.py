@@ -19,7 +19,7 @@ from qa.engine.expressions import (
     compile_expression,
 )
 from qa.engine.remedies import Template, compile_template
-from qa.model.columns import SONAR_KINDS
+from qa.model.columns import COLUMNS, SONAR_KINDS
 from qa.model.errors import SheetError, UnitError, nearest
 from qa.model.findings import Severity
 from qa.model.shipped import shipped
@@ -29,6 +29,7 @@ from qa.model.units import ONE, Unit, conversion, measure
 RULE_KEYS = (
     *("title", "require", "allow", "allow_beams", "severity", "remedy", "source", "why", "says"),
     *("when", "join_pings", "keep_pings", "keep_when", "count", "clause", "not_from_pings"),
+    "columns",
 )
 LIMIT_KEYS = ("value", "unit", "about", "source")
 SHEET_KEYS = ("title", "about", "extends", "drop", "limits", "rule")
@@ -55,7 +56,7 @@ class Limit:
 
 @dataclass(frozen=True, slots=True)
 class Rule:
-    """One rule, compiled. ``sheet`` is the sheet that first made it, ``changed_by`` those that changed it since."""
+    """One rule, compiled: a requirement, or the ``columns`` that must be logged. ``sheet`` is the sheet that first made it, ``changed_by`` those that changed it since."""
 
     id: str
     title: str
@@ -74,6 +75,7 @@ class Rule:
     keep_pings: int
     keep_when: Expression | None
     not_from_pings: str
+    columns: tuple[str, ...]
     sheet: str
     changed_by: tuple[str, ...] = ()
 
@@ -416,13 +418,24 @@ class _Builder:
                     expected="a text in quotes",
                 )
         cannot = table.get("not_from_pings", "")
-        if "require" not in table and not cannot:
+        columns = self._columns(table, where)
+        if "require" not in table and not cannot and columns is None:
             raise SheetError(
                 "A rule says what it requires.", where=where, expected='require = "a <= b"'
             )
+        if columns is not None and "require" in table:
+            raise SheetError(
+                "A rule either requires columns or compares.",
+                where=f"{where}: require",
+                advice="Make two rules of it.",
+            )
+        if columns == ():
+            cannot = cannot or "the sheet names no column that must be logged"
         requirement = None
         text = table.get("require", "")
-        if not cannot:
+        if columns:
+            text = f"logged: {', '.join(columns)}"
+        elif not cannot:
             count = table.get("count", "guaranteed")
             if count not in ("guaranteed", "possible"):
                 raise SheetError(
@@ -475,9 +488,24 @@ class _Builder:
             keep_pings=self._count(table, "keep_pings", 3, 1, where),
             keep_when=self._condition(table, "keep_when", where),
             not_from_pings=cannot,
+            columns=columns or (),
             sheet=table["_sheet"],
             changed_by=table.get("_changed", ()),
         )
+
+    def _columns(self, table: Mapping[str, Any], where: str) -> tuple[str, ...] | None:
+        if "columns" not in table:
+            return None
+        names = _names(table["columns"], f"{where}: columns")
+        valid = [c.name for c in COLUMNS.values() if c.kind in ("number", "flag", "form")]
+        for name in names:
+            if name not in valid:
+                raise SheetError(
+                    f'There is no column "{name[:80]}".',
+                    where=f"{where}: columns",
+                    advice=nearest(name[:80], valid),
+                )
+        return tuple(names)
 
     def _condition(self, table: Mapping[str, Any], key: str, where: str) -> Expression | None:
         if key not in table:

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from qa.engine.alongline import running_median
 from qa.engine.reducers import Groups
 
 Floats = NDArray[np.float64]
@@ -14,22 +15,7 @@ Times = NDArray[np.int64]
 
 ALONG_WINDOW = 15
 TREND_WINDOW = 51
-WOBBLE_SECONDS = 20.0
-
-
-def running_median(values: Floats, window: int) -> Floats:
-    """Median of the known values in a window around each, cut short at the ends; NaN where none is known."""
-    half = window // 2
-    n = len(values)
-    if not n:
-        return np.zeros(0)
-    padded = np.concatenate([np.full(half, np.nan), values, np.full(half, np.nan)])
-    ordered = np.sort(np.lib.stride_tricks.sliding_window_view(padded, window), axis=1)
-    count = np.sum(~np.isnan(ordered), axis=1)
-    some = np.maximum(count, 1)
-    rows = np.arange(n)
-    median = 0.5 * (ordered[rows, (some - 1) // 2] + ordered[rows, some // 2])
-    return np.where(count > 0, median, np.nan)
+WOBBLE_SECONDS = 30.0
 
 
 def along_departure(height: Floats) -> Floats:
@@ -131,10 +117,10 @@ def lasting(values: Floats) -> Floats:
 
 
 def wobble_gain(time: Times, fan_tilt: Floats, roll: Floats) -> Floats:
-    """Share of the roll that is found again as a tilt of the swath, over 20 s around each ping.
+    """Share of the roll that is found again as a tilt of the swath, over 30 s around each ping.
 
     The slope of a straight-line fit of the swath's tilt on the roll in the window; 0 where the two go together
-    by chance (a correlation under 0.7), or the vessel hardly rolls (under 0.3° standard deviation).
+    by chance (a correlation under 0.9), or the vessel hardly rolls (under 0.3° standard deviation).
     """
     n = len(time)
     if n < 10:
@@ -159,7 +145,7 @@ def wobble_gain(time: Times, fan_tilt: Floats, roll: Floats) -> Floats:
         both = windowed(x * y) / number - mean_x * mean_y
         gain = both / var_x
         correlation = both / np.sqrt(var_x * var_y)
-    shows = (np.abs(correlation) >= 0.7) & (var_x >= 0.3**2) & (number >= 10)
+    shows = (np.abs(correlation) >= 0.9) & (var_x >= 0.3**2) & (number >= 10)
     return np.where(number >= 10, np.where(shows, np.abs(gain), 0.0), np.nan)
 
 

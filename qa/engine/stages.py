@@ -297,6 +297,8 @@ class _BeamValues(dict[str, Any]):
 def _by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = None) -> Any:
     recipe = node.recipe
     assert recipe is not None
+    if recipe.positional:
+        return recipe.function(*(values[need] for need in recipe.needs))
     named = zip(recipe.parameters, recipe.needs, strict=True)
     given = {p: values[need] for p, need in named if need not in node.absent}
     return (
@@ -349,10 +351,13 @@ def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> lis
 def outcomes(computed: Computed, planned: PlannedRule) -> RuleSeries | None:
     """What one rule comes to for each ping of a group; None where it was not planned."""
     rule, plan = planned.rule, computed.plan
-    if rule.requirement is None or planned.missing or not planned.applies:
+    if (rule.requirement is None and not rule.columns) or planned.missing or not planned.applies:
         return None
     n = len(computed.rows)
-    if planned.beam:
+    if rule.requirement is None:
+        judged = _columns_outcome(computed, planned)
+        met = judged.met
+    elif planned.beam:
         judged, met = _beam_outcome(computed, planned)
     else:
         with np.errstate(all="ignore"):
@@ -381,6 +386,15 @@ def _unit_of(planned: PlannedRule, plan: Plan) -> str:
     if requirement is None or not requirement.comparisons:
         return "1"
     return str(requirement.comparisons[0].left.unit)
+
+
+def _columns_outcome(computed: Computed, planned: PlannedRule) -> Judgement:
+    """How many of the required columns have no value at each ping."""
+    lacking = np.full(len(computed.rows), float(len(planned.absent)))
+    for key in planned.reads:
+        lacking += np.isnan(np.asarray(computed.values[key], dtype=float))
+    known = np.ones(len(lacking), dtype=bool)
+    return Judgement(known, lacking == 0.0, lacking, np.zeros(len(lacking)), -lacking)
 
 
 def _beam_outcome(computed: Computed, planned: PlannedRule) -> tuple[Judgement, NDArray[np.bool_]]:

@@ -47,6 +47,8 @@ STATED: dict[str, dict[str, Unit | tuple[str, ...] | type[int]]] = {
         "range_scale": METRE,
         "ping_rate": HERTZ,
         "gain": DECIBEL,
+        "focus": ("none", "dynamic"),
+        "detection_threshold": DECIBEL,
     },
     "water": {
         "sound_speed": METRE / SECOND,
@@ -54,8 +56,25 @@ STATED: dict[str, dict[str, Unit | tuple[str, ...] | type[int]]] = {
         "salinity": ONE,
         "tide": METRE,
         "altitude": METRE,
+        "wind_speed": METRE / SECOND,
+        "backscatter_normal": DECIBEL,
+        "backscatter_oblique": DECIBEL,
+        "target_strength": DECIBEL,
     },
     "vessel": {"speed": METRE / SECOND},
+    "uncertainty": {
+        "sound_speed_sigma": METRE / SECOND,
+        "surface_sound_speed_sigma": METRE / SECOND,
+        "roll_sigma": DEGREE,
+        "pitch_sigma": DEGREE,
+        "heading_sigma": DEGREE,
+        "heave_sigma": METRE,
+        "draught_sigma": METRE,
+        "squat_sigma": METRE,
+        "tide_sigma": METRE,
+        "range_sigma": METRE,
+        "position_sigma": METRE,
+    },
 }
 """What each table may state of the survey, with its unit, its choices or ``int``."""
 

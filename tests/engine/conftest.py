@@ -132,16 +132,20 @@ def multibeam() -> dict[str, Any]:
 
 @pytest.fixture
 def swath(memory_log: Any) -> Any:
-    """``swath(n, depth, interval, …)``: a clean multibeam line of 21 beams over a flat seabed."""
+    """``swath(n, depth, interval, …)``: a clean multibeam line of 101 beams over a flat seabed."""
 
     def make(
         n: int = 60, depth: float = 20.0, interval: float = 0.1, fan: float = 40.0, **pings: Any
     ) -> MemoryLog:
-        angles = np.broadcast_to(np.linspace(-fan, fan, 21), (n, 21)).copy()
+        angles = np.broadcast_to(np.linspace(-fan, fan, 101), (n, 101)).copy()
         return MemoryLog(
             np.arange(n) * interval,
             {"speed": 2.0, **pings},
-            {"depth": np.full((n, 21), depth), "beam_angle": angles, "accepted": np.ones((n, 21))},
+            {
+                "depth": np.full((n, 101), depth),
+                "beam_angle": angles,
+                "accepted": np.ones((n, 101)),
+            },
         )
 
     return make

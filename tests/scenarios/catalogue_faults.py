@@ -94,8 +94,10 @@ def fixes_jump(channel: Channel, fault: Fault, rng: Random) -> None:
 
 
 def motion_frozen(channel: Channel, fault: Fault, rng: Random) -> None:
-    for name in ("roll", "pitch", "heave"):
-        channel.ping[name][_where(fault)] = channel.ping[name][fault.first]
+    """A value of its own, so that the pings before the fault cannot happen to share it."""
+    for name, step in (("roll", 0.37), ("pitch", 0.37), ("heave", 0.07)):
+        stuck = round(float(channel.ping[name][fault.first]) + step, 2)
+        channel.ping[name][_where(fault)] = stuck
 
 
 def too_much_roll(channel: Channel, fault: Fault, rng: Random) -> None:
@@ -127,7 +129,7 @@ def refracted(channel: Channel, fault: Fault, rng: Random) -> None:
     rows = _where(fault)
     tangent = np.tan(np.radians(beam["beam_angle"][rows]))
     height = beam["depth"][rows] - channel.ping["transducer_depth"][rows][:, None]
-    beam["depth"][rows] = np.round(beam["depth"][rows] - 0.06 * height * tangent**2, 2)
+    beam["depth"][rows] = np.round(beam["depth"][rows] - 0.10 * height * tangent**2, 2)
     channel.beam = beam
 
 
@@ -144,10 +146,10 @@ def roll_left_in(channel: Channel, fault: Fault, rng: Random) -> None:
 
 
 def turns_fast(channel: Channel, fault: Fault, rng: Random) -> None:
-    """Heading swings by 8 degrees from each ping to the next, to and fro."""
-    swing = np.where(np.arange(fault.last - fault.first + 1) % 2 == 0, 4.0, -4.0)
-    heading = channel.ping["heading"]
-    heading[_where(fault)] = np.round((heading[_where(fault)] + swing) % 360.0, 2)
+    """Heading goes round by 8 degrees from each ping to the next, and stays there."""
+    turned = np.zeros(channel.ping["heading"].size)
+    turned[fault.first + 1 : fault.last + 2] = 8.0
+    channel.ping["heading"] = np.round((channel.ping["heading"] + np.cumsum(turned)) % 360.0, 2)
 
 
 def _time_against_depth(rng: Random, drawn: Any, first: int, last: int) -> Fault:
@@ -194,7 +196,7 @@ def _altitude_low(rng: Random, drawn: Any, first: int, last: int) -> Fault:
 
 
 def _short_pulse(rng: Random, drawn: Any, first: int, last: int) -> Fault:
-    value = round(1.0 / drawn.sonar.frequency, 8)
+    value = round(0.25 / drawn.sonar.frequency, 9)
     return setting("pulse_length", value, ("pulse-cycles",), first, last, 2.0)
 
 
@@ -203,7 +205,7 @@ KINDS: tuple[Kind, ...] = (
     Kind("altitude frozen", ("bottom-track",), ("side-scan",), altitude_frozen, seconds=12.0),
     Kind("the fish too high", ("altitude",), ("side-scan",), prepare=_altitude_high),
     Kind("the fish too low", ("altitude",), ("side-scan",), prepare=_altitude_low),
-    Kind("depth frozen", ("depth-stuck",), ("single-beam",), depth_frozen, seconds=12.0),
+    Kind("depth frozen", ("depth-stuck",), ("single-beam",), depth_frozen, seconds=18.0),
     Kind("depth spikes", ("depth-spike",), ("multibeam", "single-beam"), depth_spikes),
     Kind("most beams lost", ("beam-loss",), ("multibeam",), beams_lost),
     Kind("ping numbers left out", ("ping-number",), ALL, numbers_missing, ("ping",)),
@@ -234,11 +236,15 @@ KINDS: tuple[Kind, ...] = (
         ("temperature", "salinity", "sound_speed"),
     ),
     Kind("refraction", ("swath-curl",), ("multibeam",), refracted, seconds=4.0),
-    Kind("roll left in", ("swath-wobble",), ("multibeam",), roll_left_in, ("roll",), 20.0),
+    Kind("roll left in", ("swath-wobble",), ("multibeam",), roll_left_in, ("roll",), 40.0),
     Kind("the vessel turns fast", ("yaw-gap",), ("multibeam",), turns_fast, ("heading",)),
     Kind("times and depths disagree", ("time-depth",), ("multibeam",), prepare=_time_against_depth),
     Kind(
-        "pulse too short", ("pulse-cycles",), ALL, columns=("pulse_length",), prepare=_short_pulse
+        "pulse too short",
+        ("pulse-cycles",),
+        ALL,
+        columns=("pulse_length", "frequency"),
+        prepare=_short_pulse,
     ),
 )
 
@@ -273,5 +279,8 @@ def add(rng: Random, drawn: Any, allowed: set[str] | None = None) -> None:
         drawn.ping_numbers = True
     if kind.rules[0] in ("depth-spike", "swath-curl", "swath-wobble"):
         drawn.beams_as = "depth"
+    if kind.rules[0] == "depth-stuck" and drawn.depth_from == "datum":
+        # a depth that is stuck is not reduced by a tide that moves on
+        drawn.depth_from, drawn.tide = "waterline", False
     if kind.rules[0] == "time-depth":
         drawn.beams_as = "both"

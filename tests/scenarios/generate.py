@@ -227,7 +227,8 @@ def draw(rng: Random, number: int, kind: str, clean: bool) -> Draw:
             altitude=float(rng.uniform(0.1, 0.18)) * scale,
             margin=margin,
         )
-        sonar = replace(sonar, altitude=min(sonar.altitude, near * 0.8))
+        # within the height that suits the range, and below the nearest ground that is wanted
+        near = max(near, math.ceil(1.25 * sonar.altitude))
         limits = Limits(target, int(rng.choice([3, 5])), near)
         footprint = float(along_footprint(near, width))
         listening = 2 * scale / C
@@ -392,6 +393,9 @@ def part_of(rng: Random, drawn: Draw, file: str) -> dict[str, Any]:
         gone = str(rng.choice(["pulse_length", "beamwidth_along", "target_size", "near_range"]))
         removed = stated.pop(gone, None) is not None
         removed |= required.pop(gone, None) is not None
+        if gone == "beamwidth_along" and sonar.kind == "single-beam":
+            # a round transducer's one width would stand for the other
+            stated.pop("beamwidth_across", None)
         if removed:
             drawn.logged.discard(gone)
             drawn.decoy += f"; {gone} missing"

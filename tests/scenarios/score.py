@@ -35,6 +35,16 @@ RECKONED = (
     "ping-spacing",
 )
 
+# What a fault brings with it: sections of the rule on the left that lie within a planted fault of a rule
+# on the right are true, though the truth does not list them.
+FOLLOWS = {
+    "yaw-gap": ("ping-spacing", "pings-on-target", "ping-gap"),
+    "range-window": ("along-resolution", "across-resolution", "footprint-growth"),
+    "motion": ("motion-frozen",),
+}
+# Rules that judge a stretch by what lasts in it cannot place its ends to the ping: half their window.
+WINDOWED = {"swath-curl": 26, "swath-wobble": 300}
+
 
 @dataclass
 class Row:
@@ -79,6 +89,15 @@ def lines_of(out: Path) -> tuple[list[str], dict[Path, list[dict[str, Any]]]]:
     return truth["rules"], folders
 
 
+def _follows(section: dict[str, Any], faults: list[dict[str, Any]]) -> bool:
+    return any(
+        fault["rule"] in FOLLOWS.get(section["rule"], ())
+        and fault["first_index"] - 1 <= section["first_index"]
+        and section["last_index"] <= fault["last_index"] + 1
+        for fault in faults
+    )
+
+
 def _score_line(score: Score, where: str, line: dict[str, Any], findings: dict[str, Any]) -> None:
     here = [s for s in findings["sections"] if s["line"] == line["line"]]
     free = list(range(len(here)))
@@ -107,13 +126,13 @@ def _score_line(score: Score, where: str, line: dict[str, Any], findings: dict[s
         free.remove(best)
         row.found += 1
         row.worst_end = max(row.worst_end, off(best))
-        if off(best) > 1:
+        if off(best) > WINDOWED.get(fault["rule"], 1):
             row.misplaced += 1
             ends = here[best]["first_index"], here[best]["last_index"]
             score.complaints.append(f"{where} ENDS {ends} for {fault}")
     for j in free:
         section = here[j]
-        if section["rule"] not in score.rows:
+        if section["rule"] not in score.rows or _follows(section, line["faults"]):
             continue
         score.rows[section["rule"]].false += 1
         keys = ("rule", "channel", "first_index", "last_index", "worst", "limit", "reason")
