@@ -15,7 +15,7 @@ from qa.ingest.names import Binding, plain
 from qa.ingest.planning import _files, _folder_values
 from qa.ingest.probe import FileProbe, probe
 from qa.ingest.rows import Names, RowReader, Rows
-from qa.ingest.table_source import TableFormat, TableSource
+from qa.ingest.table_source import TableFormat, TableSource, listed
 from qa.ingest.text_source import TextFormat
 from qa.ingest.times import TimePlan
 from qa.model.columns import COLUMNS, PULSE_FORMS
@@ -357,7 +357,7 @@ def _first(array: pa.Array) -> str:
     known = array.drop_null()
     if not len(known):
         return ""
-    value = known[0].as_py()
+    value = listed(known[:1])[0]
     kind = array.type.value_type if isinstance(value, list) else array.type
     # A single precision 22.55 stands in the file as such, not as 22.5499992.
     digits = 7 if pa.types.is_float32(kind) else 12

@@ -15,7 +15,7 @@ from qa.model.errors import InputError
 SAMPLE_BYTES = 1 << 18
 SEPARATORS = ("\t", ";", ",", "|", " ")
 COMMENTS = ("#", "%", "//", "!", "$", "*")
-_NUMBER = re.compile(r"^[+-]?(\d+\.?\d*|\.\d+)([eEdD][+-]?\d+)?$")
+_NUMBER = re.compile(r"^[+-]?(\d+(\.\d*)?|\.\d+)([eEdD][+-]?\d+)?$")
 _COMMA_NUMBER = re.compile(r"^[+-]?(\d+,\d+|,\d+)([eE][+-]?\d+)?$")
 _TIMELIKE = re.compile(
     r"^(\d{4}[-/.]\d{1,2}[-/.]\d{1,2}|\d{1,2}[-/.]\d{1,2}[-/.]\d{2,4}|\d{1,2}:\d{2}(:\d{2})?|\d{4}-\d{3}\D)"

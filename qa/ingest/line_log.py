@@ -361,6 +361,7 @@ class OpenedLine:
         runs.file.append(np.full(n, at, dtype=np.int64))
         runs.columns.append(columns)
 
+    @np.errstate(invalid="ignore")  # a damaged float may be a NaN of the signalling kind
     def _put_aside(self, rows: Rows, stored: Sequence[str], present: dict[str, bool]) -> None:
         if not stored:
             return

@@ -373,6 +373,9 @@ def unit_of(text: str, unit: Unit | None) -> Conversion | None:
     return None
 
 
+LONGEST_NAME = 300
+"""A longer header is the wreck of something else, and is not looked into."""
+
 _BRACKETS = re.compile(r"[(\[{<]([^()\[\]{}<>]*)[)\]}>]")
 _NUMBERED = re.compile(r"^(.*?)[\s_.\-\[(#]*?(\d{1,4})[\])]?$")
 
@@ -408,6 +411,8 @@ def _time_unit(text: str) -> bool:
 
 def _match(name: str) -> tuple[str, str, str] | None:
     """Role, unit text and a complaint, of a header's name; None where it is not known."""
+    if len(name) > LONGEST_NAME:
+        return None
     for base, unit_text, certain in _readings(name):
         key = plain(base)
         role = ROLES.get(key)
@@ -642,6 +647,8 @@ def _with_unit(binding: Binding, header: Header, choices: ColumnChoices, where: 
 
 def _advice(name: str) -> str:
     """What to write for a name that is not recognised, where it can be told."""
+    if len(name) > LONGEST_NAME:
+        return ""
     for base, _unit, _certain in _readings(name):
         key = plain(base)
         if key in _DOUBTFUL:
@@ -663,6 +670,8 @@ def wide_groups(headers: Sequence[Header]) -> dict[str, list[tuple[int, int]]]:
     """Beam columns side by side: stem as written -> (column index, its number), where at least 3 belong together."""
     groups: dict[str, list[tuple[int, int]]] = {}
     for index, header in enumerate(headers):
+        if len(header.name) > LONGEST_NAME:
+            continue
         found = _NUMBERED.match(header.name.strip())
         if found is None:
             bracketed = re.match(

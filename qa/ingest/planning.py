@@ -256,6 +256,8 @@ def _split(
             continue
         reader = RowReader(item, names, frozenset(("line",)))
         for rows in reader.batches():
+            if not len(rows):
+                continue
             if source == "column":
                 assert rows.line is not None
                 labels = np.array(names.line.names, dtype=object)[rows.line]

@@ -99,6 +99,7 @@ def is_table(path: Path, where: str) -> bool:
     return magic[:4] == b"\xff\xff\xff\xff"
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def probe(
     path: Path, shown: str, survey: SurveyFile, constants: Mapping[str, str] | None = None
 ) -> FileProbe:

@@ -133,6 +133,7 @@ class RowReader:
         column = COLUMNS[binding.role]
         return pa.float64() if column.kind == "number" else pa.string()
 
+    @np.errstate(over="ignore", invalid="ignore")
     def convert(self, raw: RawBatch) -> Rows:
         """A batch of the file as canonical rows; what is rejected goes into the account."""
         account, n = self.account, raw.length
@@ -219,8 +220,7 @@ class RowReader:
         codes: dict[str, Integers | None] = {"ping": None, "line": None, "channel": None}
         counts = np.ones(n, dtype=np.int64)
         lists: dict[str, tuple[Binding, pa.Array]] = {}
-        wide: dict[str, list[Converted]] = {}
-        numbers: list[int] = []
+        wide: dict[str, dict[int, Converted]] = {}
         for binding in self.bindings:
             array = raw.columns[binding.source]
             role = binding.role
@@ -237,9 +237,7 @@ class RowReader:
                 found = self._value(binding, array)
                 self._note(found, reasons, None)
                 self._count_missing(role, found)
-                wide.setdefault(role, []).append(found)
-                if role == next(iter(wide)):
-                    numbers.append(binding.number)
+                wide.setdefault(role, {}).setdefault(binding.number, found)
             elif self.probe.layout == "list":
                 lists[role] = binding, _plain_text(array)
             elif role == "beam":
@@ -251,7 +249,7 @@ class RowReader:
                 self._count_missing(role, found)
                 flat[role] = found.values
         if wide:
-            flat, counts = _side_by_side(wide, numbers, n)
+            flat, counts = _side_by_side(wide, n)
         if lists:
             flat, counts = self._lists(lists, reasons)
         for role, value in self.probe.constants:
@@ -365,15 +363,18 @@ def _list_lengths(array: pa.Array) -> Integers:
 
 
 def _side_by_side(
-    wide: Mapping[str, list[Converted]], numbers: list[int], n: int
+    wide: Mapping[str, Mapping[int, Converted]], n: int
 ) -> tuple[dict[str, NDArray[Any]], Integers]:
-    """Beam columns side by side as beams after one another; a beam without any value is none."""
-    width = max(len(found) for found in wide.values())
+    """Beam columns side by side as beams after one another, told apart by number; one without any value is none."""
+    numbers = sorted({number for columns in wide.values() for number in columns})
     grids: dict[str, NDArray[Any]] = {}
-    for role, found in wide.items():
-        if len(found) == width:
-            grids[role] = np.column_stack([np.asarray(f.values, dtype=np.float64) for f in found])
-    there = np.zeros((n, width), dtype=bool)
+    for role, columns in wide.items():
+        grid = np.full((n, len(numbers)), np.nan)
+        for at, number in enumerate(numbers):
+            if number in columns:
+                grid[:, at] = columns[number].values
+        grids[role] = grid
+    there = np.zeros((n, len(numbers)), dtype=bool)
     for role, grid in grids.items():
         if role != "accepted":
             there |= ~np.isnan(grid)
@@ -381,5 +382,5 @@ def _side_by_side(
         role: (grid[there] != 0.0 if role == "accepted" else grid[there])
         for role, grid in grids.items()
     }
-    flat["beam"] = np.broadcast_to(np.array(numbers, dtype=np.float64), (n, width))[there]
+    flat["beam"] = np.broadcast_to(np.array(numbers, dtype=np.float64), there.shape)[there]
     return flat, there.sum(axis=1).astype(np.int64)

@@ -213,6 +213,7 @@ def _kind(binding: Binding) -> pa.DataType:
     return pa.float64() if _is_number(binding.role.rpartition(" ")[2]) else pa.string()
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def _converted(
     raw: RawBatch,
     bindings: Sequence[Binding],

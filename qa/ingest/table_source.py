@@ -85,6 +85,7 @@ class TableSource:
                 ]
             else:
                 self._open_arrow(magic)
+            fields = _flat_fields(self.schema)
         except InputError:
             raise
         except (
@@ -96,7 +97,6 @@ class TableSource:
             MemoryError,
         ) as problem:
             raise _damaged(where, problem) from None
-        fields = _flat_fields(self.schema)
         self.fields = {path: field for path, _, field in fields}
         self.own_names = {path: name for path, name, _ in fields}
         self.nested = any("." in path and path not in self.schema.names for path in self.fields)
@@ -216,6 +216,9 @@ class TableSource:
                 start += batch.num_rows
 
     def _raw(self, batch: pa.RecordBatch, names: Sequence[str], start: int) -> RawBatch:
+        if self.kind != "parquet":
+            # Arrow takes offsets into texts and lists on trust; a damaged one would read elsewhere in memory.
+            batch.validate(full=True)
         columns = {name: _leaf(batch, name) for name in names}
         rows = np.arange(start + 1, start + 1 + batch.num_rows, dtype=np.int64)
 
@@ -242,7 +245,7 @@ class TableSource:
             if low == high:
                 continue
             places = wanted[low:high] - int(raw.rows[0])
-            parts = [raw.columns[name].take(pa.array(places)).to_pylist() for name in everything]
+            parts = [listed(raw.columns[name].take(pa.array(places))) for name in everything]
             for i, number in enumerate(wanted[low:high].tolist()):
                 found[number] = ",".join(_written(values[i]) for values in parts)[:10_000]
         return found
@@ -252,6 +255,21 @@ def _empty(rows: int, size: int) -> Iterator[pa.RecordBatch]:
     for start in range(0, rows, size):
         count = min(size, rows - start)
         yield pa.record_batch([pa.nulls(count)], names=["nothing"])
+
+
+def listed(array: pa.Array) -> list[Any]:
+    """The values of a column; times beyond the calendar as the counts that they are."""
+    try:
+        return list(array.to_pylist())
+    except (OverflowError, ValueError):
+        return [_plain_value(value) for value in array]
+
+
+def _plain_value(value: Any) -> Any:
+    try:
+        return value.as_py()
+    except (OverflowError, ValueError):
+        return getattr(value, "value", "(beyond the calendar)")
 
 
 def _written(value: Any) -> str:

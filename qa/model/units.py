@@ -190,6 +190,10 @@ def _registry() -> Any:
     return registry
 
 
+LONGEST_UNIT = 80
+"""No unit's text is longer."""
+
+
 @lru_cache(maxsize=1024)
 def conversion(text: str) -> Conversion:
     """What a unit's name means.
@@ -214,6 +218,8 @@ def conversion(text: str) -> Conversion:
     6e-05
     """
     asked = text.strip()
+    if len(asked) > LONGEST_UNIT:
+        raise UnitError("Not a known unit.", found=asked, expected="a unit in a few letters")
     lowered = " ".join(asked.lower().split())
     if lowered in _OFFSETS:
         return _OFFSETS[lowered]

@@ -90,6 +90,8 @@ class Reader:
         survey = self._survey(seed)
         _reset_peak()
         found = Outcome(number, "read")
+        unraised: list[str] = []
+        sys.unraisablehook = lambda told: unraised.append(f"{told.exc_value!r} in {told.object!r}")
         with warnings.catch_warnings(record=True) as caught:
             warnings.simplefilter("always")
             try:
@@ -104,6 +106,8 @@ class Reader:
             except BaseException:
                 found = Outcome(number, "a traceback", traceback.format_exc())
         path.unlink(missing_ok=True)
+        if unraised:
+            found = Outcome(number, "an exception that nobody heard", "\n".join(unraised))
         if caught and found.kind in ("read", "refused"):
             shown = "\n".join(f"{w.filename}:{w.lineno}: {w.message}" for w in caught)
             found = Outcome(number, "a warning", shown)
