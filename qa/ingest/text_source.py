@@ -22,7 +22,7 @@ from qa.model.errors import InputError
 BLOCK = 1 << 22
 LONGEST_ROW = 1 << 22
 """A longer row is no row of a log: a hole in the file, or a quote never closed."""
-BOMB_BYTES, BOMB_RATIO = 1 << 28, 200
+BOMB_BYTES, BOMB_RATIO = 48 << 20, 200
 """A file that unpacks to more than this many bytes and times its size is refused."""
 
 PACKED = {".gz": "gzip", ".zst": "zstd", ".bz2": "bz2"}

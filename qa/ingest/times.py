@@ -955,7 +955,8 @@ def written_step(texts: list[str], unit: float = SECOND_NS) -> int:
     >>> written_step(["2026-05-04T10:00:00.25Z", "2026-05-04T10:00:01Z"])
     10000000
     """
-    found = [re.search(r"\d[.,](\d+)\s*\D*?(?:[+-]\d\d:?\d\d)?$", t) for t in texts[:2000]]
+    # A wrecked cell may be of any length; its end tells as much.
+    found = [re.search(r"\d[.,](\d+)\s*\D*?(?:[+-]\d\d:?\d\d)?$", t[-60:]) for t in texts[:2000]]
     if not found:
         return 0
     digits = max(len(m[1]) if m else 0 for m in found)

@@ -91,6 +91,7 @@ class Reader:
         _reset_peak()
         found = Outcome(number, "read")
         unraised: list[str] = []
+        heard = sys.unraisablehook
         sys.unraisablehook = lambda told: unraised.append(f"{told.exc_value!r} in {told.object!r}")
         with warnings.catch_warnings(record=True) as caught:
             warnings.simplefilter("always")
@@ -105,6 +106,7 @@ class Reader:
                 found = Outcome(number, str(problem).partition(":")[0], str(problem))
             except BaseException:
                 found = Outcome(number, "a traceback", traceback.format_exc())
+        sys.unraisablehook = heard
         path.unlink(missing_ok=True)
         if unraised:
             found = Outcome(number, "an exception that nobody heard", "\n".join(unraised))

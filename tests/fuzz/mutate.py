@@ -284,7 +284,7 @@ def bomb(rng: random.Random) -> bytes:
     row = b"2024-05-14T08:00:00Z,10.0\n" if rng.random() < 0.5 else b"0"
     block = (row * (1 << 20))[: 1 << 20]
     out = [packer.compress(b"time,depth\n")]
-    out += [packer.compress(block) for _ in range(400)]
+    out += [packer.compress(block) for _ in range(160)]
     return b"".join(out) + packer.flush()
 
 
