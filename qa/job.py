@@ -24,6 +24,8 @@ import qa
 from qa.engine.evaluate import evaluate_line
 from qa.engine.sheets import RuleSheet, load_sheet
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
+from qa.ingest.casts import read_cast
+from qa.model.cast import Cast
 from qa.model.errors import InputError, OutputError, PingworthyError
 from qa.model.findings import (
     Assumption,
@@ -164,6 +166,7 @@ def audit(
     )
     choice = _sheet_choice(sheet, facts, limits or {})
     rules = choice.load(facts)
+    cast_of(facts)
     _check_parts(choice, facts)
     target = None if out is None else checked_target(Path(out))
     plan = plan_logs(paths, facts, day)
@@ -196,9 +199,21 @@ def _sheet_choice(
 
 
 def _check_parts(choice: SheetChoice, survey: SurveyFile) -> None:
-    """Limits of every part are checked before any log is read."""
+    """Limits and casts of every part are checked before any log is read."""
     for patterns, _ in survey.parts:
-        choice.load(survey.for_log(survey.folder / patterns[0]))
+        part = survey.for_log(survey.folder / patterns[0])
+        choice.load(part)
+        cast_of(part)
+
+
+def cast_of(survey: SurveyFile) -> Cast | None:
+    """The sound speed cast that the survey file names, read once."""
+    return None if survey.profile is None else _read_cast(survey.profile)
+
+
+@lru_cache(maxsize=8)
+def _read_cast(path: Path) -> Cast:
+    return read_cast(path)
 
 
 # Lines as tasks
@@ -211,7 +226,9 @@ def run_line(job: LineJob) -> LineOutcome:
         survey = log.survey
         if not len(log.ping_table()):
             return _without_pings(job, log.accounts())
-        result = evaluate_line(log, survey, job.sheet.load(survey), job.task.files)
+        result = evaluate_line(
+            log, survey, job.sheet.load(survey), job.task.files, cast=cast_of(survey)
+        )
     except PingworthyError as error:
         return _failed(job, str(error), str(error))
     except Exception as error:

@@ -212,13 +212,20 @@ def usual_interval(interval_per_ping: Floats, typical_interval: Floats) -> Float
         )
 
 
-CLOCK_FAULTS = ("in order", "steps back", "repeats", "stamped on arrival")
+CLOCK_FAULTS = ("in order", "steps back", "repeats", "stamped on arrival", "too coarse")
 
 
-def clock_fault(time: Times, ping_span: Floats, bottom_travel_time: Any = np.nan) -> Floats:
+def clock_fault(
+    time: Times,
+    ping_span: Floats,
+    bottom_travel_time: Any = np.nan,
+    listening_time: Any = np.nan,
+    time_resolution: Any = np.nan,
+) -> Floats:
     """What is wrong with each ping's time, as a position in :data:`CLOCK_FAULTS`.
 
-    A step back or a repeat is the fault of the ping whose time is not later than the one before.
+    A step back or a repeat is the fault of the ping whose time is not later than the one before. A clock is
+    too coarse where the span and the listening time differ by less than its step: either could be the longer.
 
     Parameters
     ----------
@@ -228,8 +235,14 @@ def clock_fault(time: Times, ping_span: Floats, bottom_travel_time: Any = np.nan
         [s]
     bottom_travel_time : ndarray of float64, shape (n,), optional
         Without it, stamps of arrival are not looked for. [s]
+    listening_time : ndarray of float64, shape (n,), optional
+        [s]
+    time_resolution : float, optional
+        Step of the clock. [s]
     """
     found = np.zeros(len(time))
+    with np.errstate(invalid="ignore"):
+        found[np.abs(ping_span - listening_time) < time_resolution] = 4.0
     bottom = np.broadcast_to(np.asarray(bottom_travel_time, dtype=float), ping_span.shape)
     stamped = (stamped_on_arrival(ping_span, bottom) == 1.0) & (ping_span > 0.0)
     found[stamped] = 3.0

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from typing import Any, Protocol
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,6 +17,7 @@ from qa.engine.remedies import filled
 from qa.engine.sections import find_sections
 from qa.engine.sheets import Rule, RuleSheet
 from qa.engine.stages import BATCH_ROWS, Computed, LineRun, beam_misses, outcomes, run_stages
+from qa.model.cast import Cast
 from qa.model.columns import COLUMNS
 from qa.model.findings import (
     EXEMPT,
@@ -35,16 +36,7 @@ from qa.model.findings import (
 from qa.model.log import ChannelSpan, Floats, LineLog, PingTable
 from qa.model.survey_file import SurveyFile
 from qa.model.units import Unit, readable
-
-
-class Profile(Protocol):
-    """Speed of sound down the water."""
-
-    @property
-    def depth(self) -> Floats: ...
-    @property
-    def sound_speed(self) -> Floats: ...
-
+from qa.physics import water
 
 EXTRA = (
     *("ping_interval", "ping_span", "listening_time", "bottom_travel_time", "range_resolution"),
@@ -61,7 +53,7 @@ def evaluate_line(
     sheet: RuleSheet,
     files: Sequence[str] = (),
     rows: int = BATCH_ROWS,
-    cast: Profile | None = None,
+    cast: Cast | None = None,
 ) -> LineResult:
     """Everything about one line.
 
@@ -77,7 +69,7 @@ def evaluate_line(
         The line's files, as the user wrote them.
     rows : int
         Beams a batch holds, about; no result depends on it.
-    cast : Profile, optional
+    cast : Cast, optional
         Speed of sound down the water, as the survey file's profile says it.
     """
     table = log.ping_table()
@@ -86,13 +78,14 @@ def evaluate_line(
     if kind == "side-scan" and "depth" in beam_columns:
         table = _with_depth(table, log)
         beam_columns = frozenset()
+    measured = _measured(table, cast)
     runs = []
     for present, channels in _groups(table):
         available = Available(
             kind,
             present | ({"time", "ping"} if table.ping_logged else {"time"}),
             beam_columns,
-            {**survey.stated, **_cast(cast), "kind": kind, **_depth_from(survey)},
+            {**survey.stated, **measured, "kind": kind, **_depth_from(survey)},
             log.grain == "ping",
             assumed_kind,
         )
@@ -119,8 +112,23 @@ def line_kind(log: LineLog, survey: SurveyFile) -> tuple[str, bool]:
     return "side-scan", True
 
 
-def _cast(cast: Profile | None) -> dict[str, Any]:
-    return {} if cast is None else {"cast": cast}
+def _measured(table: PingTable, cast: Cast | None) -> dict[str, Any]:
+    """What is known of the line beside its columns."""
+    known: dict[str, Any] = {}
+    if math.isfinite(table.time_resolution):
+        known["time_resolution"] = table.time_resolution
+    if cast is not None:
+        known["cast"] = with_sound_speed(cast)
+    return known
+
+
+def with_sound_speed(cast: Cast) -> Cast:
+    """The cast with a sound speed at each depth, from temperature and salinity where it was not measured."""
+    if cast.sound_speed is not None or cast.temperature is None or cast.salinity is None:
+        return cast
+    speed = np.asarray(water.sound_speed(cast.temperature, cast.salinity, cast.depth), dtype=float)
+    known = ~np.isnan(speed)
+    return replace(cast, depth=cast.depth[known], sound_speed=speed[known])
 
 
 def _depth_from(survey: SurveyFile) -> dict[str, str]:

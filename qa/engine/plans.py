@@ -224,9 +224,11 @@ class Resolver:
 
     def _stated(self, key: str) -> Node | None:
         if key in self.available.stated:
-            origin: Origin = (
-                "assumed" if key == "kind" and self.available.assumed_kind else "stated"
-            )
+            origin: Origin = "stated"
+            if key == "kind" and self.available.assumed_kind:
+                origin = "assumed"
+            elif key == "time_resolution":
+                origin = "computed from logged"
             return Node(
                 key,
                 "stated",

@@ -17,7 +17,7 @@ from qa.engine import alongline
 from qa.engine.expressions import Symbol
 from qa.model.columns import COLUMNS, PULSE_FORMS, SONAR_KINDS
 from qa.model.survey_file import STATED
-from qa.model.units import ONE, Unit, conversion
+from qa.model.units import ONE, SECOND, Unit, conversion
 from qa.physics import beams, hits, pulse
 
 
@@ -128,8 +128,14 @@ def quantity(
     known.append(recipe)
 
 
+MEASURED: dict[str, Unit] = {"time_resolution": SECOND, "cast": ONE}
+"""What is known of a line beside its columns: the step of its clock, and the survey's sound speed cast."""
+
+
 def symbol(name: str) -> Symbol | None:
     """What a quantity's name means to the compiler of expressions, or None."""
+    if name in MEASURED:
+        return Symbol(MEASURED[name])
     if name in _TEXTS:
         return Symbol(ONE, "text", _TEXTS[name])
     if name in RECIPES:

@@ -26,6 +26,8 @@ class MemoryLog:
     beams: Mapping[str, Any] = field(default_factory=dict)
     channels: tuple[tuple[str, int], ...] = ()
     name: str = "L1"
+    numbers: Any = None
+    time_resolution: float = float("nan")
 
     @property
     def grain(self) -> str:
@@ -48,7 +50,8 @@ class MemoryLog:
             np.round(np.asarray(self.time, dtype=float) * 1e9).astype(np.int64)
             + 1_700_000_000_000_000_000
         )
-        return PingTable(time, np.arange(n) + 100, True, tuple(spans), columns)
+        numbers = np.arange(n) + 100 if self.numbers is None else np.asarray(self.numbers)
+        return PingTable(time, numbers, True, tuple(spans), columns, self.time_resolution)
 
     def beam_batches(self, columns: Collection[str], rows: int = 100_000) -> Iterator[BeamBatch]:
         n = len(self.time)

@@ -339,3 +339,35 @@ def test_evidence_leads_from_the_section_to_the_inputs(
     assert evidence["depth"].origin == "logged"
     assert evidence["beamwidth_along"].origin == "stated"
     assert evidence["depth"].value == 80.0
+
+
+def test_columns_that_a_sheet_requires(
+    run: Any, swath: Any, multibeam: dict[str, Any], tmp_path: Any
+) -> None:
+    sheet = tmp_path / "contract.toml"
+    sheet.write_text(
+        'extends = ["physics"]\n[rule.required-columns]\ncolumns = ["roll", "depth", "accepted"]\n',
+        encoding="utf-8",
+    )
+    roll = np.zeros(60)
+    complete = run(swath(roll=roll), multibeam, TARGET, sheet)
+    assert complete.rule("required-columns").verdict == "in spec"
+    roll[20:30] = np.nan
+    gone = run(swath(roll=roll), multibeam, TARGET, sheet)
+    assert gone.spans("required-columns") == [("", 20, 29)]
+    absent = run(swath(), multibeam, TARGET, sheet).rule("required-columns")
+    assert absent.verdict == "out of spec"
+    assert "not in the log: roll" in absent.reason
+    shipped = run(swath(), multibeam, TARGET).rule("required-columns")
+    assert shipped.verdict == "not assessed"
+
+
+def test_a_clock_coarser_than_a_margin_says_so(
+    run: Any, swath: Any, multibeam: dict[str, Any]
+) -> None:
+    listening = 2 * 60.0 / math.cos(math.radians(40.0)) / 1500.0 + 60e-6
+    log = swath(depth=60.0, interval=listening + 0.004)
+    log.time_resolution = 0.01
+    assert run(log, multibeam, TARGET).spans("clock") == [("", 0, 58)]
+    log.time_resolution = 0.001
+    assert run(log, multibeam, TARGET).spans("clock") == []
