@@ -6,12 +6,12 @@ import os
 import textwrap
 import tomllib
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any, cast
 
 from qa.engine.evaluate import line_kind
-from qa.engine.plans import Available, make_plan
+from qa.engine.plans import Available, Plan, make_plan
 from qa.engine.sheets import RuleSheet, load_sheet
 from qa.ingest.describe import ColumnDescription, Description, Layout, describe_logs
 from qa.ingest.times import iso
@@ -70,27 +70,16 @@ def waiting_rules(layout: Layout, sheet: RuleSheet) -> Waiting:
     pings = frozenset(n for n in present if COLUMNS[n].grain == "ping" and n not in _NAMES)
     if kind == "side-scan" and "depth" in beams:
         pings, beams = pings | {"depth"}, frozenset()
-    stated = {**survey.stated, "kind": kind}
+    stated: dict[str, Any] = {**survey.stated, "kind": kind}
+    if survey.profile is not None:
+        stated["cast"] = str(survey.profile)
     if survey.says_depth_from:
         stated["depth_from"] = survey.depth_from
     available = Available(
         kind, pings | {"time"}, beams, stated, layout.grain == "ping", assumed_kind
     )
     plan = make_plan(sheet, available)
-    missing: dict[str, list[str]] = {}
-    assessable: list[str] = []
-    never: list[str] = []
-    exempt: list[str] = []
-    for planned in plan.rules:
-        if planned.rule.not_from_pings:
-            never.append(planned.rule.id)
-        elif not planned.applies:
-            exempt.append(planned.rule.id)
-        elif planned.missing:
-            for name in planned.missing:
-                missing.setdefault(name, []).append(planned.rule.id)
-        else:
-            assessable.append(planned.rule.id)
+    rules = [p for p in plan.rules if not p.rule.not_from_pings]
     assumed = {
         key: node.value if isinstance(node.value, str) else readable(float(node.value), node.unit)
         for key, node in sorted(plan.nodes.items())
@@ -99,14 +88,51 @@ def waiting_rules(layout: Layout, sheet: RuleSheet) -> Waiting:
     return Waiting(
         kind,
         assumed_kind,
-        tuple(assessable),
-        {name: tuple(rules) for name, rules in sorted(missing.items())},
-        tuple(never),
-        tuple(exempt),
+        tuple(p.rule.id for p in rules if p.applies and not p.missing),
+        _missing(sheet, available, plan),
+        tuple(p.rule.id for p in plan.rules if p.rule.not_from_pings),
+        tuple(p.rule.id for p in rules if not p.applies),
         assumed,
     )
 
 
+def _missing(sheet: RuleSheet, available: Available, plan: Plan) -> dict[str, tuple[str, ...]]:
+    """What rules wait for.
+
+    A plan names the first inputs that a rule lacks; what it would lack once these were there is found by planning
+    again as if they were.
+    """
+    found: dict[str, dict[str, None]] = {}
+    waiting = {p.rule.id for p in plan.rules if p.applies and p.missing}
+    for _ in range(_ROUNDS):
+        lacking = [p for p in plan.rules if p.applies and p.missing and p.rule.id in waiting]
+        for planned in lacking:
+            for name in planned.missing:
+                found.setdefault(name, {})[planned.rule.id] = None
+        before = available
+        available = _as_if_there(available, {n for p in lacking for n in p.missing})
+        if available == before:
+            break
+        plan = make_plan(sheet, available)
+    return {name: tuple(rules) for name, rules in sorted(found.items())}
+
+
+def _as_if_there(available: Available, names: Iterable[str]) -> Available:
+    pings, beams, stated = set(available.ping_columns), set(available.beam_columns), {}
+    for name in names:
+        if name in COLUMNS:
+            (pings if COLUMNS[name].grain == "ping" or available.makes_beams else beams).add(name)
+        elif _table_of(name) or name == "cast":
+            stated[name] = 1.0
+    return replace(
+        available,
+        ping_columns=frozenset(pings),
+        beam_columns=frozenset(beams),
+        stated={**stated, **available.stated},
+    )
+
+
+_ROUNDS = 6
 _NAMES = ("line", "channel")
 
 
@@ -316,7 +342,8 @@ def _waiting_lines(layout: Layout, waits: Waiting, sheet: RuleSheet) -> list[str
     if waits.missing:
         lines += ["", "  Missing, and the rules that wait for it"]
         for name, rules in sorted(waits.missing.items(), key=lambda item: (-len(item[1]), item[0])):
-            lines += _wrapped(f"{name}{_where_to_say(name, sheet)}", "    ", "      ")
+            where = _where_to_say(name, sheet, layout.survey)
+            lines += _wrapped(f"{name}: {where}", "    ", "      ")
             lines += _wrapped(", ".join(rules), "        ")
     if waits.assumed:
         lines += ["", "  Assumed, since neither logged nor stated"]
@@ -332,18 +359,20 @@ def _waiting_lines(layout: Layout, waits: Waiting, sheet: RuleSheet) -> list[str
     return lines
 
 
-def _where_to_say(name: str, sheet: RuleSheet) -> str:
+def _where_to_say(name: str, sheet: RuleSheet, survey: SurveyFile) -> str:
     """Where a missing value can be stated."""
-    if name in sheet.limits:
-        return ": a limit, to be stated under [limits]"
     table = _table_of(name)
+    if name in sheet.limits:
+        return "a limit, to be stated under [limits]"
     if name == "cast":
-        return ": a cast, named as profile under [water]"
+        return "a sound speed cast, named as profile under [water]"
+    if name in survey.stated and name in COLUMNS:
+        return "in the log (it is stated, but these look at what was logged)"
     if table and name in COLUMNS:
-        return f": in the log, or under [{table}]"
+        return f"in the log, or under [{table}]"
     if table:
-        return f": under [{table}]"
-    return ": in the log"
+        return f"under [{table}]"
+    return "in the log" if name in COLUMNS else "these logs do not give it"
 
 
 def _table_of(name: str) -> str:
@@ -550,6 +579,8 @@ def _suggest(into: _Suggestions, layout: Layout, waits: Waiting, sheet: RuleShee
         if table:
             into.say(table, name, _example(name, value), f"assumed: {value}")
     for name, rules in waits.missing.items():
+        if name in layout.survey.stated:
+            continue
         table = "limits" if name in sheet.limits else _table_of(name)
         why = "for " + ", ".join(rules[:3]) + (", …" if len(rules) > 3 else "")
         if table:
@@ -557,7 +588,7 @@ def _suggest(into: _Suggestions, layout: Layout, waits: Waiting, sheet: RuleShee
             into.say(table, name, _example(name, "", unit), why)
         elif name == "cast":
             into.say("water", "profile", _toml("cast.csv"), why)
-        elif name in COLUMNS:
+        elif name in COLUMNS and any(not advice for _, advice in layout.unused):
             into.say("columns", name, _toml("its name in the log"), why)
     for name, advice in layout.unused:
         if advice:
@@ -590,6 +621,8 @@ def _example(name: str, value: str, unit: Unit | None = None) -> str:
     if name in _EXAMPLES:
         return _toml(_EXAMPLES[name])
     kind = str(unit if unit is not None else stated)
+    if name.endswith("_sigma"):
+        return _toml(f"0.05 {kind}")
     return "1" if kind == "1" else _toml(f"1 {kind.replace('·', ' * ')}")
 
 

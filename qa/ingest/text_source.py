@@ -370,7 +370,7 @@ class TextSource:
             rows = np.delete(rows, gone)
             kept = np.delete(kept, gone)
         columns = {}
-        for name in table.column_names:
+        for name in kinds:  # where none is wanted the table holds them all
             column = table.column(name)
             columns[name] = column.chunk(0) if column.num_chunks == 1 else column.combine_chunks()
 
