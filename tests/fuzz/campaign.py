@@ -44,8 +44,9 @@ MOST_SECONDS, MOST_WALL, MOST_BYTES = 5.0, 60.0, 500_000_000
 """Seconds of work (a busy machine may make that many more on the wall), and memory of the whole process."""
 AUDITED = 0.06
 """Share of the files that go through the whole audit; a tenth of these write their report too."""
-LIFE = 1500
-"""Files that a worker reads before a fresh one takes over."""
+LIFE, HEAVY = 1500, 250_000_000
+"""Files that a worker reads before a fresh one takes over, and the memory after which one does so at once: what the
+system's allocator keeps from one file is not the next one's."""
 
 
 class Wrong(Exception):
@@ -243,6 +244,7 @@ class _Worker:
     since: float = 0.0
     work: float = 0.0
     done: int = 0
+    tired: bool = False
 
 
 @dataclass(slots=True)
@@ -287,7 +289,7 @@ class Campaign:
                     over = self._over(worker)
                 if over is not None:
                     self._fail(Outcome(worker.number, over))
-                if over is not None or worker.done >= LIFE:
+                if over is not None or worker.tired:
                     self._ended(worker)
                     team[at] = worker = self._started(worker.folder)
                     self._next(worker, numbers)
@@ -328,6 +330,7 @@ class Campaign:
                 outcome.number, "too much memory", f"{outcome.bytes / 1e6:.0f} MB", outcome.bytes
             )
         self.most_bytes, worker.done = max(self.most_bytes, outcome.bytes), worker.done + 1
+        worker.tired = worker.done >= LIFE or outcome.bytes > HEAVY
         self.rows += outcome.rows
         if outcome.kind in ("read", "refused"):
             self.kinds[outcome.kind] += 1
