@@ -466,9 +466,9 @@ quantity(
 )
 quantity(
     "depth_unchanged",
-    platform.frozen_seconds,
+    platform.depth_frozen_seconds,
     unit="s",
-    needs=("time", "nearest_vertical(depth)", "least(depth)", "greatest(depth)"),
+    needs=("time", "nearest_vertical(depth)", "least(depth)", "greatest(depth)", "speed"),
     whole_line=True,
     kinds=_ECHO_SOUNDERS,
     about="How long the depths have stayed the same to the last digit, where they do not usually.",

@@ -8,9 +8,12 @@ its inputs, in three stages: pings, beams reduced to their ping, pings again wit
 from __future__ import annotations
 
 import graphlib
+import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
+
+import numpy as np
 
 from qa.engine import quantities
 from qa.engine.assumed import assumed_values
@@ -506,6 +509,8 @@ def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
     by_ping = False
     try:
         if rule.when is not None:
+            if _never(rule.when, resolver):
+                return PlannedRule(rule, False, False, none, frozenset(), none)
             conditions = resolver.all_of(rule.when.names)
             by_ping = any(n.value is None for n in conditions)
             if by_ping:
@@ -534,6 +539,18 @@ def _planned(rule: Rule, resolver: Resolver, roots: list[str]) -> PlannedRule:
     timed = frozenset(rests_on) & TIMED if "clock_fault" not in rests_on else frozenset()
     beam = grain_of(*(n.grain for n in needed)) == "beam"
     return PlannedRule(rule, beam, True, none, timed, tuple(n.key for n in needed), by_ping)
+
+
+def _never(condition: Expression, resolver: Resolver) -> bool:
+    """Whether a condition is false by what is stated alone, whatever its other quantities may be."""
+    known: dict[str, Any] = {}
+    for name in condition.names:
+        try:
+            node = resolver.resolve(name)
+        except _Missing:
+            node = None
+        known[name] = math.nan if node is None or node.value is None else node.value
+    return bool(np.all(np.asarray(condition.run(known)) == 0.0))
 
 
 def _of_columns(rule: Rule, resolver: Resolver, roots: list[str], by_ping: bool) -> PlannedRule:

@@ -113,6 +113,18 @@ def frozen_seconds(time: Times, *values: Floats) -> Floats:
         return np.where(np.isnan(unchanged), np.nan, np.where(stuck, unchanged, 0.0))
 
 
+def depth_frozen_seconds(
+    time: Times, nearest: Floats, least: Floats, greatest: Floats, speed: Any = np.nan
+) -> Floats:
+    """How long the depths have been stuck at each ping, while the vessel was not known to lie still. [s]"""
+    return _under_way(frozen_seconds(time, nearest, least, greatest), speed)
+
+
+def _under_way(frozen: Floats, speed: Any) -> Floats:
+    with np.errstate(invalid="ignore"):
+        return np.where(np.asarray(speed, dtype=float) < SLOWEST_MOVING, 0.0, frozen)
+
+
 def motion_frozen_seconds(
     time: Times, roll: Any = np.nan, pitch: Any = np.nan, heave: Any = np.nan
 ) -> Floats:
@@ -130,10 +142,7 @@ def position_frozen_seconds(
     time: Times, latitude: Floats, longitude: Floats, speed: Any = np.nan
 ) -> Floats:
     """How long the position has been stuck at each ping while the vessel was under way. [s]"""
-    frozen = frozen_seconds(time, latitude, longitude)
-    speed = np.broadcast_to(np.asarray(speed, dtype=float), frozen.shape)
-    with np.errstate(invalid="ignore"):
-        return np.where(speed < SLOWEST_MOVING, 0.0, frozen)
+    return _under_way(frozen_seconds(time, latitude, longitude), speed)
 
 
 def motion_share(
