@@ -156,6 +156,11 @@ def find_dialect(
         )
     counts = Counter(len(split_line(line, separator)) for _, line in data[-min(len(data), 200) :])
     width = max(counts, key=lambda n: (counts[n], n))
+    if counts[width] < 0.9 * counts.total():
+        heads = (split_line(line, separator) for _, line in data[:30])
+        named = next((len(cells) for cells in heads if _known_names(cells) >= 2), width)
+        # the header alone proves nothing: rows may end in one separator more
+        width = named if counts[named] > 1 else width
     wide = [(n, line) for n, line in data if len(split_line(line, separator)) == width]
     notes: list[str] = []
     header_at, names, first = _header(
@@ -209,9 +214,11 @@ def _separator(lines: Sequence[str], wanted: int) -> str | None:
                 continue
             width, hits = max(several.items(), key=lambda kv: kv[1])
         share = hits / len(tail)
-        if share < 0.5 and len(tail) > 3:
+        # names that are known tell more than rows, of which most may be wrecked
+        named = any(_known_names(split_line(line, separator)) >= 2 for line in lines[:30])
+        if share < 0.5 and len(tail) > 3 and not named:
             continue
-        score = share - 0.02 * rank
+        score = share - 0.02 * rank + 0.3 * named
         if wanted and width == wanted:
             score += 0.5
         if separator == ",":

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from qa.ingest.probe import FileProbe
-from qa.ingest.rows import Integers, Names, RowReader, Rows
+from qa.ingest.rows import Integers, Names, RowReader, Rows, Stretch
 from qa.ingest.spill import Spill
 from qa.ingest.times import resolution
 from qa.model.columns import COLUMNS
@@ -47,14 +47,14 @@ class DayChoice:
 
 @dataclass(frozen=True, slots=True)
 class FilePart:
-    """What of a file belongs to a line: all its rows, or those whose numbers fall into spans (first, last).
+    """What of a file belongs to a line: all its rows, or a stretch.
 
-    ``met`` are spans of rows that stand in another line's file too, ``met_in``, and count there.
+    ``met`` are rows that stand in another line's file too, ``met_in``, and count there.
     """
 
     probe: FileProbe
-    spans: tuple[tuple[int, int], ...] | None = None
-    met: tuple[tuple[int, int], ...] = ()
+    stretch: Stretch | None = None
+    met: Stretch | None = None
     met_in: str = ""
 
 
@@ -70,6 +70,20 @@ class _Runs:
     rows: list[Integers]
     file: list[Integers]
     columns: list[dict[str, NDArray[np.float64]]]
+
+
+@dataclass(frozen=True, slots=True)
+class _Met:
+    """The pings of :class:`_Runs`, put together: one entry each."""
+
+    time: Integers
+    ping: Integers
+    channel: Integers
+    counts: Integers
+    length: Integers
+    number: Integers
+    file: Integers
+    columns: dict[str, NDArray[np.float64]]
 
 
 class _Places:
@@ -203,10 +217,10 @@ class OpenedLine:
         runs = _Runs([], [], [], [], [], [], [], [])
         present: dict[str, bool] = {}
         for at, part in enumerate(self._parts):
-            reader = RowReader(part.probe, names)
+            reader = RowReader(part.probe, names, stretch=part.stretch)
             self._readers.append(reader)
-            if part.met:
-                count = sum(last - first + 1 for first, last in part.met)
+            if part.met is not None:
+                count = sum(last - first + 1 for first, last in part.met.spans)
                 reader.account.notes.append(
                     f"{count} rows stand in {part.met_in} too, value for value; each was counted once, there."
                 )
@@ -221,7 +235,7 @@ class OpenedLine:
         beam_roles = [b.role for b in part.probe.bindings if COLUMNS[b.role].grain == "beam"]
         if part.probe.layout == "wide":
             beam_roles.append("beam")
-        stored = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
+        stored = self._stored
         last: dict[str, Any] | None = None
         for rows in reader.batches():
             rows = self._in_scope(rows, part, reader)
@@ -240,13 +254,8 @@ class OpenedLine:
         self._resolve_notes(reader, runs, at)
 
     def _in_scope(self, rows: Rows, part: FilePart, reader: RowReader) -> Rows:
-        if part.spans is not None:
-            mine = _within(rows.numbers, part.spans)
-            # Another line's task accounts for the others.
-            reader.account.rows_read -= int((~mine).sum())
-            rows = rows.take(mine)
-        if part.met:
-            met = _within(rows.numbers, part.met)
+        if part.met is not None:
+            met = part.met.holds(rows.numbers)
             reader.reject_all(rows.numbers[met], MET_BEFORE)
             rows = rows.take(~met)
         if self._day is not None and len(rows):
@@ -441,16 +450,20 @@ class OpenedLine:
             if logged:
                 self._drop_messages(kept, time, ping, channel, file, length)
         else:
-            merged = (
-                self._gathered(time, ping, channel, counts, length, columns, number, file)
-                if logged
-                else None
-            )
-            if merged is not None:
-                time, ping, channel, counts, length, number, file, columns = merged
-                kept = np.ones(len(time), dtype=bool)
-            else:
-                self._drop_same_pings(kept, time, ping, channel, logged, file, length)
+            different = self._drop_same_pings(kept, time, ping, channel, file, length)
+            if different and logged:
+                runs_met = _Met(time, ping, channel, counts, length, number, file, columns)
+                merged = self._gathered(runs_met, kept)
+                if merged is not None:
+                    time, ping, channel, length = (
+                        merged.time,
+                        merged.ping,
+                        merged.channel,
+                        merged.length,
+                    )
+                    file, columns = merged.file, merged.columns
+                    kept = np.ones(len(time), dtype=bool)
+                self._note_namesakes(time, ping, channel, file, kept)
         order = self._order(time, ping, channel, kept, logged, names, file)
         if self._rows_of_files is None:
             self._drop_strays(kept, order, time, channel, file, length)
@@ -514,7 +527,7 @@ class OpenedLine:
                 )
 
     def _beam_rows(self) -> list[NDArray[Any]]:
-        stored = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
+        stored = self._stored
         if not stored:
             return []
         whole: dict[str, list[NDArray[Any]]] = {name: [] for name in stored}
@@ -553,95 +566,84 @@ class OpenedLine:
                     "first row of each ping was taken."
                 )
 
-    def _gathered(
-        self,
-        time: Integers,
-        ping: Integers,
-        channel: Integers,
-        counts: Integers,
-        length: Integers,
-        columns: dict[str, NDArray[np.float64]],
-        number: Integers,
-        file: Integers,
-    ) -> (
-        tuple[
-            Integers,
-            Integers,
-            Integers,
-            Integers,
-            Integers,
-            Integers,
-            Integers,
-            dict[str, NDArray[np.float64]],
-        ]
-        | None
-    ):
-        """Beams of a ping that stand apart in the file, brought together in memory; None where none do."""
-        order = np.lexsort((np.arange(len(time)), time, ping, channel))
-        same = (
-            (np.diff(ping[order]) == 0)
-            & (np.diff(channel[order]) == 0)
-            & (np.diff(time[order]) == 0)
-        )
-        if not same.any() or "beam" not in self._beam_columns:
+    def _gathered(self, runs: _Met, kept: NDArray[np.bool_]) -> _Met | None:
+        """Beams of a ping that stand apart in the file, brought together in memory; None where none do.
+
+        Runs of one ping that give different values for one beam are of different heads: they are left apart.
+        """
+        if "beam" not in self._beam_columns:
             return None
-        beam = self._beam_rows()[
-            sorted({r for p in self._parts for r in _beam_roles(p.probe)}).index("beam")
-        ]
-        starts = np.cumsum(counts) - counts
-        # A ping that is there twice, beam for beam, is a repeat and no shuffle.
-        if not _shuffled(order, same, starts, counts, beam):
+        count = len(runs.time)
+        order = np.lexsort((np.arange(count), runs.time, runs.ping, runs.channel, ~kept))
+        same = kept[order[1:]] & kept[order[:-1]]
+        for key in (runs.time, runs.ping, runs.channel):
+            same &= np.diff(key[order]) == 0
+        if not same.any():
             return None
-        group = np.zeros(len(time), dtype=np.int64)
+        group = np.zeros(count, dtype=np.int64)
         group[order] = np.concatenate([[0], np.cumsum(~same)])
-        rows_group = np.repeat(group, counts)
-        names = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
+        names = self._stored
         arrays = dict(zip(names, self._beam_rows(), strict=True))
-        rank = np.full(int(group.max()) + 1, np.iinfo(np.int64).max)
-        np.minimum.at(rank, group, np.arange(len(time)))
-        row_order = np.lexsort((arrays["beam"], rank[rows_group]))
-        if (counts == length).all():
-            repeated = np.zeros(len(row_order), dtype=bool)
-            repeated[1:] = np.diff(rows_group[row_order]) == 0
-            for values in arrays.values():
-                here = np.asarray(values[row_order], dtype=float)
-                repeated[1:] &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+        owner = np.repeat(np.arange(count), runs.counts)
+        row_order = np.lexsort((arrays["beam"], group[owner]))
+        row_order = row_order[kept[owner[row_order]]]
+        in_group = group[owner[row_order]]
+        again = np.diff(in_group, prepend=-1) == 0
+        again &= np.diff(arrays["beam"][row_order], prepend=np.nan) == 0
+        equal = again.copy()
+        for values in arrays.values():
+            here = np.asarray(values[row_order], dtype=float)
+            equal[1:] &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+        apart = np.isin(group, in_group[again & ~equal])
+        if apart.any():
+            if apart[kept].all():
+                return None
+            group[apart] = group.max() + 1 + np.arange(int(apart.sum()))
+        rank = np.full(int(group.max()) + 1, count)
+        np.minimum.at(rank, group[kept], np.flatnonzero(kept))
+        repeated = equal & ~apart[owner[row_order]]
+        length = runs.length
+        if repeated.any() and (runs.counts == runs.length).all():
             gone = np.sort(row_order[repeated])
-            if len(gone):
-                owner = np.repeat(np.arange(len(time)), counts)[gone]
-                for at, reader in enumerate(self._readers):
-                    mine = gone[file[owner] == at]
-                    reader.reject_all(self._places.numbers(mine), "a duplicate of another row")
-                counts = counts - np.bincount(owner, minlength=len(time))
-                length = counts
-                row_order = row_order[~repeated]
+            for at, reader in enumerate(self._readers):
+                mine = gone[runs.file[owner[gone]] == at]
+                reader.reject_all(self._places.numbers(mine), "a duplicate of another row")
+            length = length - np.bincount(owner[gone], minlength=count)
+            row_order = row_order[~repeated]
+        row_order = row_order[
+            np.lexsort((arrays["beam"][row_order], rank[group[owner[row_order]]]))
+        ]
         self._beams_ordered = True
         spill = Spill()
         spill.append({n: v[row_order] for n, v in arrays.items()})
         spill.finish()
         self._spill = spill
-        first = np.sort(np.unique(rank))
-        merged = np.searchsorted(first, rank[group])
-        new_counts = np.bincount(merged, weights=counts, minlength=len(first))
-        new_length = np.bincount(merged, weights=length, minlength=len(first))
+        first = np.unique(rank[group[kept]])
+        merged = np.searchsorted(first, rank[group[owner[row_order]]])
+        self._counts = np.bincount(merged, minlength=len(first)).astype(np.int64)
         # a ping whose beams stand in several files counts, row by row, for each
-        self._rows_of_files = np.bincount(file, weights=length, minlength=len(self._readers))
-        self._counts = new_counts.astype(np.int64)
-        for at, reader in enumerate(self._readers):
-            if bool((file == at).any()):
-                reader.account.notes.append(
-                    "Beams of one ping stand apart in the file; they were brought together."
-                )
-        return (
-            time[first],
-            ping[first],
-            channel[first],
-            self._counts,
-            new_length.astype(np.int64),
-            number[first],
-            file[first],
-            {k: v[first] for k, v in columns.items()},
+        self._rows_of_files = np.bincount(
+            runs.file[kept], weights=length[kept], minlength=len(self._readers)
         )
+        moved = np.unique(runs.file[order[1:][same]]).tolist()
+        for at in moved:
+            self._readers[at].account.notes.append(
+                "Beams of one ping stand apart in the file; they were brought together."
+            )
+        return _Met(
+            runs.time[first],
+            runs.ping[first],
+            runs.channel[first],
+            self._counts,
+            runs.length[first],
+            runs.number[first],
+            runs.file[first],
+            {k: v[first] for k, v in runs.columns.items()},
+        )
+
+    @property
+    def _stored(self) -> list[str]:
+        return sorted({r for p in self._parts for r in _beam_roles(p.probe)})
 
     def _drop_same_pings(
         self,
@@ -649,13 +651,13 @@ class OpenedLine:
         time: Integers,
         ping: Integers,
         channel: Integers,
-        logged: bool,
         file: Integers,
         length: Integers,
-    ) -> None:
+    ) -> bool:
         """The same ping met again, in this or another file, counts once.
 
-        A ping is the same where time, number, channel and every beam are; one whose beams differ is kept, and named.
+        A ping is the same where time, number, channel and every beam are. Returns whether there are pings of one time,
+        number and channel whose beams differ.
         """
         order = np.lexsort((np.arange(len(time)), time, ping, channel))
         again = (
@@ -664,7 +666,7 @@ class OpenedLine:
             & (np.diff(time[order]) == 0)
         )
         if not again.any():
-            return
+            return False
         digest = self._digests(len(time))
         order = np.lexsort((np.arange(len(time)), digest, time, ping, channel))
         same = np.ones(len(time) - 1, dtype=bool)
@@ -673,7 +675,6 @@ class OpenedLine:
         repeated = np.sort(order[1:][same])
         kept[repeated] = False
         start = np.cumsum(length) - length
-        other = int(again.sum()) - len(repeated)
         for at, reader in enumerate(self._readers):
             mine = repeated[file[repeated] == at]
             if len(mine):
@@ -682,17 +683,35 @@ class OpenedLine:
                 )
                 places = _spread(start[mine], length[mine])
                 reader.reject_all(self._places.numbers(places), MET_BEFORE)
-            if other and logged and bool((file == at).any()):
+        return int(again.sum()) > len(repeated)
+
+    def _note_namesakes(
+        self,
+        time: Integers,
+        ping: Integers,
+        channel: Integers,
+        file: Integers,
+        kept: NDArray[np.bool_],
+    ) -> None:
+        """Say where pings of one time, number and channel differ in their beams."""
+        rows = np.flatnonzero(kept)
+        order = rows[np.lexsort((time[rows], ping[rows], channel[rows]))]
+        same = np.ones(len(order) - 1, dtype=bool)
+        for key in (time, ping, channel):
+            same &= np.diff(key[order]) == 0
+        for at, reader in enumerate(self._readers):
+            count = int((file[order[1:][same]] == at).sum())
+            if count:
                 reader.account.notes.append(
-                    f"{other} pings of this line have the time and number of another but other beams; all were used. If "
-                    "they are of different heads, log a channel."
+                    f"{count} pings have the time and number of another but other beams; all were used. If they are of "
+                    "different heads, log a channel."
                 )
 
     def _digests(self, count: int) -> Integers:
         """For each run a number that its beams' values give: equal where all of them are."""
         digest = np.zeros(count, dtype=np.uint64)
         runs = np.repeat(np.arange(count), self._counts)
-        stored = sorted({r for p in self._parts for r in _beam_roles(p.probe)})
+        stored = self._stored
         passed = 0
         for batch in self._spill.batches(stored):
             for weight, name in enumerate(stored, start=1):
@@ -848,14 +867,6 @@ def _first_known(
     return np.where(inside, values[np.minimum(at, len(values) - 1)], np.nan)
 
 
-def _within(numbers: Integers, spans: Sequence[tuple[int, int]]) -> NDArray[np.bool_]:
-    """Which numbers fall into spans (first, last) that rise."""
-    firsts = np.array([a for a, _ in spans])
-    lasts = np.array([b for _, b in spans])
-    at = np.searchsorted(firsts, numbers, side="right") - 1
-    return np.asarray((at >= 0) & (numbers <= lasts[np.maximum(at, 0)]))
-
-
 def _falls(time: Integers) -> int:
     """How often times fall."""
     return int((np.diff(time) < 0).sum())
@@ -865,19 +876,6 @@ def _spread(starts: Integers, lengths: Integers) -> Integers:
     """Places of stretches, all after one another."""
     ends = np.cumsum(lengths)
     return np.repeat(starts + lengths - ends, lengths) + np.arange(int(lengths.sum()))
-
-
-def _shuffled(
-    order: Integers, same: NDArray[np.bool_], starts: Integers, counts: Integers, beam: NDArray[Any]
-) -> bool:
-    """Whether two runs of one ping hold different beams."""
-    for at in np.flatnonzero(same)[:50].tolist():
-        one, other = order[at], order[at + 1]
-        first = beam[starts[one] : starts[one] + counts[one]]
-        second = beam[starts[other] : starts[other] + counts[other]]
-        if len(np.intersect1d(first, second)) < min(len(first), len(second)):
-            return True
-    return False
 
 
 def _ranks(names: Sequence[str]) -> list[int]:

@@ -13,7 +13,7 @@ import numpy as np
 from qa.ingest.line_log import DayChoice, FilePart, OpenedLine
 from qa.ingest.overlap import met_before
 from qa.ingest.probe import FileProbe, probe
-from qa.ingest.rows import Integers, Names, RowReader
+from qa.ingest.rows import Integers, Names, RowReader, Stretch
 from qa.model.errors import InputError
 from qa.model.findings import InputFile
 from qa.model.survey_file import SurveyFile
@@ -89,7 +89,7 @@ def plan_logs(
     for at, ((own_probe, _), name) in enumerate(zip(by_source["file"], names, strict=True)):
         part = FilePart(own_probe)
         if at in met:
-            part = FilePart(own_probe, met=_stretches(met[at][1]), met_in=met[at][0])
+            part = FilePart(own_probe, met=_stretch(met[at][1]), met_in=met[at][0])
         lines.append(LineTask(name, (own_probe.shown,), (part,), own_probe.size, day))
     for source in ("column", "gap"):
         lines += _split(by_source[source], source, day, failed)
@@ -98,12 +98,12 @@ def plan_logs(
     return LogPlan(tuple(lines), tuple(failed))
 
 
-def _stretches(numbers: Integers) -> tuple[tuple[int, int], ...]:
-    """Rising numbers as spans (first, last)."""
+def _stretch(numbers: Integers) -> Stretch:
+    """The rows of rising numbers."""
     breaks = np.flatnonzero(np.diff(numbers) != 1)
     firsts = numbers[np.concatenate([[0], breaks + 1])]
     lasts = numbers[np.concatenate([breaks, [len(numbers) - 1]])]
-    return tuple(zip(firsts.tolist(), lasts.tolist(), strict=True))
+    return Stretch(tuple(zip(firsts.tolist(), lasts.tolist(), strict=True)))
 
 
 def open_line(task: LineTask, survey: SurveyFile) -> OpenedLine:
@@ -231,11 +231,10 @@ def _split(
     failed: list[InputFile],
 ) -> list[LineTask]:
     """Lines from a column or from gaps in time: each file is read once to see where they lie."""
-    spans: dict[str, dict[int, list[tuple[int, int]]]] = {}
+    parts: dict[str, list[FilePart]] = {}
     names = Names()
     last_time, gaps = None, 0
-    ordered = list(probes)
-    for at, (item, own) in enumerate(ordered):
+    for item, own in probes:
         if (
             source == "column"
             and "line" not in item.roles
@@ -255,35 +254,58 @@ def _split(
             )
             continue
         reader = RowReader(item, names, frozenset(("line",)))
-        for rows in reader.batches():
-            if not len(rows):
-                continue
-            if source == "column":
-                assert rows.line is not None
-                labels = np.array(names.line.names, dtype=object)[rows.line]
-            else:
-                before = np.concatenate(
-                    [[rows.time[0] if last_time is None else last_time], rows.time[:-1]]
-                )
-                jumps = np.cumsum((rows.time - before) > own.lines.gap * 1e9) + gaps
-                last_time, gaps = int(rows.time[-1]), int(jumps[-1])
-                labels = np.array([f"line {j + 1}" for j in jumps], dtype=object)
-            edges = np.flatnonzero(labels[1:] != labels[:-1]) + 1
-            starts = np.concatenate([[0], edges])
-            stops = np.concatenate([edges, [len(labels)]])
-            for a, b in zip(starts.tolist(), stops.tolist(), strict=True):
-                if b > a:
-                    own_spans = spans.setdefault(str(labels[a]), {}).setdefault(at, [])
-                    first, last = int(rows.numbers[a]), int(rows.numbers[b - 1])
-                    if own_spans and own_spans[-1][1] + 1 == first:
-                        own_spans[-1] = (own_spans[-1][0], last)
-                    else:
-                        own_spans.append((first, last))
+        firsts: list[int] = []
+        labels: list[str] = []
+        try:
+            for rows in reader.batches():
+                if not len(rows):
+                    continue
+                if source == "column":
+                    assert rows.line is not None
+                    here = np.array(names.line.names, dtype=object)[rows.line]
+                else:
+                    before = np.concatenate(
+                        [[rows.time[0] if last_time is None else last_time], rows.time[:-1]]
+                    )
+                    jumps = np.cumsum((rows.time - before) > own.lines.gap * 1e9) + gaps
+                    last_time, gaps = int(rows.time[-1]), int(jumps[-1])
+                    here = np.array([f"line {j + 1}" for j in jumps.tolist()], dtype=object)
+                begin = np.concatenate([[0], np.flatnonzero(here[1:] != here[:-1]) + 1])
+                for a in begin.tolist():
+                    if not labels or labels[-1] != here[a]:
+                        firsts.append(int(rows.numbers[a]))
+                        labels.append(str(here[a]))
+        except InputError as error:
+            failed.append(InputFile(item.shown, error=str(error)))
+            continue
+        if not labels:
+            # no row can be used: a line of its own gives the account of its rows
+            parts.setdefault(stem(item.shown), []).append(FilePart(item))
+        for label, found in _spans(firsts, labels).items():
+            part = FilePart(item, Stretch(found, _start(reader.starts, found[0][0])))
+            parts.setdefault(label or "(no name)", []).append(part)
     lines = []
-    for label, files in spans.items():
-        parts = tuple(FilePart(ordered[at][0], tuple(found)) for at, found in sorted(files.items()))
-        shown = tuple(p.probe.shown for p in parts)
-        lines.append(
-            LineTask(label or "(no name)", shown, parts, sum(p.probe.size for p in parts), day)
-        )
+    for label, own_parts in parts.items():
+        shown = tuple(p.probe.shown for p in own_parts)
+        size = sum(p.probe.size for p in own_parts)
+        lines.append(LineTask(label, shown, tuple(own_parts), size, day))
     return lines
+
+
+def _spans(firsts: Sequence[int], labels: Sequence[str]) -> dict[str, tuple[tuple[int, int], ...]]:
+    """Rows of each label, from where it begins to where another does: every row of the file belongs to one."""
+    found: dict[str, list[tuple[int, int]]] = {}
+    if not labels:
+        return {}
+    starts = [0, *firsts[1:]]
+    for start, stop, label in zip(starts, [*firsts[1:], _BEYOND], labels, strict=True):
+        found.setdefault(label, []).append((start, stop - 1))
+    return {label: tuple(spans) for label, spans in found.items()}
+
+
+_BEYOND = 1 << 62
+
+
+def _start(starts: Sequence[tuple[int, int]], first: int) -> tuple[int, int]:
+    """The last block that begins before a row."""
+    return max((s for s in starts if s[1] < first), default=(0, 0))

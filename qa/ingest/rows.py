@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from qa.ingest.names import Binding
 from qa.ingest.probe import FileProbe
 from qa.ingest.table_source import TableSource
-from qa.ingest.text_source import RawBatch
+from qa.ingest.text_source import RawBatch, TextSource
 from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
 from qa.ingest.values import (
     Converted,
@@ -81,18 +81,41 @@ class Names:
     channel: NameCodes = field(default_factory=NameCodes)
 
 
+@dataclass(frozen=True, slots=True)
+class Stretch:
+    """Rows of a file that are to be read: those whose numbers fall into rising ``spans`` (first, last).
+
+    ``start`` is where in the file a reader may begin: a block's byte, and the number of the line before it.
+    """
+
+    spans: tuple[tuple[int, int], ...]
+    start: tuple[int, int] = (0, 0)
+
+    def holds(self, numbers: Integers) -> NDArray[np.bool_]:
+        """Which row numbers are within."""
+        firsts = np.array([a for a, _ in self.spans])
+        lasts = np.array([b for _, b in self.spans])
+        at = np.searchsorted(firsts, numbers, side="right") - 1
+        return np.asarray((at >= 0) & (numbers <= lasts[np.maximum(at, 0)]))
+
+
 class RowReader:
-    """Reads one file as canonical rows, keeping its account."""
+    """Reads one file, or a stretch of it, as canonical rows, keeping its account."""
 
     def __init__(
-        self, probe: FileProbe, names: Names, wanted: frozenset[str] | None = None
+        self,
+        probe: FileProbe,
+        names: Names,
+        wanted: frozenset[str] | None = None,
+        stretch: Stretch | None = None,
     ) -> None:
-        self.probe, self.names = probe, names
+        self.probe, self.names, self.stretch = probe, names, stretch
         self.account = FileAccount(probe.shown, notes=list(probe.notes))
         self.state = TimeState()
         self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
         self._latest = NO_TIME
         self._unwritten: set[int] = set()
+        self.starts: list[tuple[int, int]] = []
 
     def batches(self) -> Iterator[Rows]:
         """The file's rows, batch after batch, in file order."""
@@ -115,12 +138,28 @@ class RowReader:
         opened = self.probe.open()
         if isinstance(opened, TableSource):
             try:
-                for _, raw in opened.batches(list(sources)):
+                for _, raw in opened.batches(list(sources), groups=self._groups(opened)):
                     yield raw
             finally:
                 opened.close()
-        else:
+        elif self.stretch is None or self.probe.times.rolls_over:
             yield from opened.batches(sources)
+        else:
+            yield from opened.batches(
+                sources, start=self.stretch.start, last=self.stretch.spans[-1][1]
+            )
+        if isinstance(opened, TextSource) and opened.seekable:
+            self.starts = opened.starts
+
+    def _groups(self, opened: TableSource) -> list[int] | None:
+        if self.stretch is None or self.probe.times.rolls_over:
+            return None
+        ends = np.cumsum(opened.groups)
+        needed = []
+        for group, (end, count) in enumerate(zip(ends.tolist(), opened.groups, strict=True)):
+            if count and any(a <= end and b > end - count for a, b in self.stretch.spans):
+                needed.append(group)
+        return needed
 
     def _time_kind(self) -> pa.DataType:
         plan = self.probe.times
@@ -136,12 +175,17 @@ class RowReader:
     @np.errstate(over="ignore", invalid="ignore")
     def convert(self, raw: RawBatch) -> Rows:
         """A batch of the file as canonical rows; what is rejected goes into the account."""
-        account, n = self.account, raw.length
+        account = self.account
+        time, bad_time = convert_times(self.probe.times, dict(raw.columns), self.state)
+        if self.stretch is not None:
+            mine = self.stretch.holds(raw.rows)
+            raw = _part_of(raw, mine, self.stretch)
+            time, bad_time = time[mine], bad_time[mine]
+        n = raw.length
         account.rows_read += n + len(raw.broken)
         for number, reason, text in raw.broken:
             self._reject(number, reason, text)
         reasons: list[tuple[NDArray[np.bool_], str]] = []
-        time, bad_time = convert_times(self.probe.times, dict(raw.columns), self.state)
         reasons.append((bad_time, "the time cannot be read"))
         missing = (time == NO_TIME) & ~bad_time
         reasons.append((missing, "no time"))
@@ -349,6 +393,25 @@ class RowReader:
                     self.account.missing["position"] = (
                         self.account.missing.get("position", 0) + count
                     )
+
+
+def _part_of(raw: RawBatch, mine: NDArray[np.bool_], stretch: Stretch) -> RawBatch:
+    """The rows of a batch that belong to a stretch of the file."""
+    broken = raw.broken
+    if broken:
+        held = stretch.holds(np.array([number for number, _, _ in broken])).tolist()
+        broken = [row for row, there in zip(broken, held, strict=True) if there]
+    if mine.all():
+        return replace(raw, broken=broken)
+    kept = np.flatnonzero(mine)
+    mask = pa.array(mine)
+    return RawBatch(
+        len(kept),
+        {name: array.filter(mask) for name, array in raw.columns.items()},
+        raw.rows[kept],
+        lambda positions: raw.texts(kept[positions]),
+        broken,
+    )
 
 
 def _plain_text(array: pa.Array) -> pa.Array:

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import codecs
 import io
+import itertools
 import re
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
-from dataclasses import dataclass, field
+from contextlib import closing
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import IO, Any
 
@@ -203,10 +205,23 @@ class _Block:
     lines: int
 
 
-def _blocks(path: Path, where: str, form: TextFormat) -> Iterator[_Block]:
-    """Blocks of whole lines, from the first row on. ``first`` is the 0-based number of the block's first line."""
-    skip, line = form.dialect.first_line, 0
+def _blocks(
+    path: Path,
+    where: str,
+    form: TextFormat,
+    start: tuple[int, int] = (0, 0),
+    starts: list[tuple[int, int]] | None = None,
+) -> Generator[_Block]:
+    """Blocks of whole lines, from the first row on. ``first`` is the 0-based number of the block's first line.
+
+    ``start`` is a byte where a line begins and that line's number; ``starts`` takes these for each block.
+    """
+    skip, line = form.dialect.first_line, start[1]
+    at = start[0]
     with open_bytes(path, where) as raw:
+        if at:
+            raw.seek(at)
+            form = replace(form, mark=0)
         stream = _Transcoded(raw, form.dialect.encoding, form.mark, form.carriage)
         carried = b""
         while True:
@@ -226,6 +241,9 @@ def _blocks(path: Path, where: str, form: TextFormat) -> Iterator[_Block]:
                 continue
             block, carried = carried + data[:cut], data[cut:]
             count = block.count(b"\n")
+            if starts is not None:
+                starts.append((at, line))
+            at += len(block) + (form.mark if not line else 0)
             if line + count <= skip:
                 line += count
                 continue
@@ -250,6 +268,7 @@ class TextSource:
     def __init__(self, path: Path, where: str, form: TextFormat) -> None:
         self.path, self.where, self.form = path, where, form
         self.dialect = form.dialect
+        self.starts: list[tuple[int, int]] = []
         self._as_text: set[str] = set()
 
     def batches(
@@ -257,6 +276,8 @@ class TextSource:
         kinds: Mapping[str, pa.DataType],
         threads: int = 2,
         most: int | None = None,
+        start: tuple[int, int] = (0, 0),
+        last: int | None = None,
     ) -> Iterator[RawBatch]:
         """Read columns in batches, in file order.
 
@@ -269,22 +290,34 @@ class TextSource:
             Blocks parsed at the same time.
         most : int, optional
             Stop after about so many bytes.
+        start : tuple of int
+            Where to begin, as :attr:`starts` gave it when the file was read before.
+        last : int, optional
+            Number of the last row that is wanted.
         """
-        blocks = _blocks(self.path, self.where, self.form)
-        if most is not None:
-            first = next(blocks, None)
-            if first is not None:
-                if len(first.data) > most:
-                    cut = first.data.rfind(b"\n", 0, most) + 1 or len(first.data)
-                    data = first.data[:cut]
-                    first = _Block(data, first.first, data.count(b"\n"))
-                yield self._parse(first, kinds)
-            blocks.close()  # type: ignore[attr-defined]  # a generator
-            return
-        if threads <= 1:
-            for block in blocks:
-                yield self._parse(block, kinds)
-            return
+        self.starts = []
+        with closing(_blocks(self.path, self.where, self.form, start, self.starts)) as every:
+            blocks: Iterator[_Block] = every
+            if last is not None:
+                blocks = itertools.takewhile(lambda block: block.first < last, every)
+            if most is not None:
+                first = next(blocks, None)
+                if first is not None:
+                    if len(first.data) > most:
+                        cut = first.data.rfind(b"\n", 0, most) + 1 or len(first.data)
+                        data = first.data[:cut]
+                        first = _Block(data, first.first, data.count(b"\n"))
+                    yield self._parse(first, kinds)
+            elif threads <= 1:
+                for block in blocks:
+                    yield self._parse(block, kinds)
+            else:
+                yield from self._parsed(blocks, kinds, threads)
+
+    def _parsed(
+        self, blocks: Iterator[_Block], kinds: Mapping[str, pa.DataType], threads: int
+    ) -> Iterator[RawBatch]:
+        """Blocks parsed side by side, in their order."""
         with ThreadPoolExecutor(threads) as pool:
             waiting: list[Future[RawBatch]] = []
             try:
