@@ -181,6 +181,81 @@ def columns(
     raise typer.Exit(2 if found.description.failed else 0)
 
 
+LogOf = Annotated[
+    Path | None,
+    typer.Option(
+        "--log", help="The log whose [[part]] of the survey file counts.", show_default=False
+    ),
+]
+
+
+@app.command()
+def rules(
+    sheet: Sheet = None, survey: Survey = None, limits: Limits = None, log: LogOf = None
+) -> None:
+    """Every rule of a sheet: what it requires, its limits and where they come from."""
+    from qa.rule_pages import rules_text
+
+    typer.echo(rules_text(sheet, survey, _overrides(limits or []), log, _width()))
+
+
+@app.command()
+def explain(
+    name: Annotated[str, typer.Argument(help="A rule, a limit or a quantity.")],
+    values: Annotated[
+        list[str] | None,
+        typer.Argument(
+            metavar="[NAME=VALUE]…",
+            help="Values to work it out for, as in speed=4kt.",
+            show_default=False,
+        ),
+    ] = None,
+    sheet: Sheet = None,
+    survey: Survey = None,
+    depth: Annotated[
+        str | None,
+        typer.Option(
+            "--depth", help="Depth to work limits out for, as in 37m.", show_default=False
+        ),
+    ] = None,
+    limits: Limits = None,
+    log: LogOf = None,
+) -> None:
+    """A rule, limit or quantity in full: what it checks, why, what to do, formula, inputs, units, source."""
+    from qa.rule_pages import explain_text
+
+    given = _overrides(values or [], "NAME=VALUE")
+    typer.echo(
+        explain_text(name, sheet, survey, depth, given, _overrides(limits or []), log, _width())
+    )
+
+
+@app.command()
+def check(
+    files: Annotated[list[Path], typer.Argument(help="Rule sheets or survey files.")],
+    quiet: Quiet = False,
+) -> None:
+    """Whether rule sheets and survey files are valid: one message for each mistake.
+
+    Exit status: 0 all are valid, 2 otherwise.
+    """
+    from qa.checking import check_file
+
+    wrong = False
+    for file in files:
+        found = check_file(file)
+        wrong = wrong or bool(found.mistakes)
+        if found.mistakes or not quiet:
+            typer.echo(str(found), err=bool(found.mistakes))
+    raise typer.Exit(2 if wrong else 0)
+
+
+def _width() -> int:
+    import shutil
+
+    return shutil.get_terminal_size((96, 24)).columns
+
+
 def _audit(
     logs: list[str],
     survey: Path | None,
@@ -231,13 +306,13 @@ def _audit(
     raise typer.Exit(findings.exit_status)
 
 
-def _overrides(texts: list[str]) -> dict[str, str]:
+def _overrides(texts: list[str], where: str = "--set") -> dict[str, str]:
     found = {}
     for text in texts:
         name, equals, value = text.partition("=")
         if not equals or not name.strip() or not value.strip():
             raise PingworthyError(
-                "Not a limit with a value.", where="--set", found=text, expected="target_size=0.5m"
+                "Not a name with a value.", where=where, found=text, expected="target_size=0.5m"
             )
         found[name.strip()] = value.strip()
     return found

@@ -174,6 +174,21 @@ class Resolver:
         self.nodes[key] = node
         return node
 
+    def found(self, key: str) -> Node | None:
+        """As :meth:`resolve`, or None where the name cannot be had."""
+        try:
+            return self.resolve(key)
+        except _Missing:
+            return None
+
+    def missing(self, key: str) -> tuple[str, ...]:
+        """Inputs that a name would need and that are not there; none if it can be had."""
+        try:
+            self.resolve(key)
+        except _Missing as missing:
+            return missing.names
+        return ()
+
     def _found(self, key: str) -> Node:
         if key in self.sheet.limits:
             return self._limit(self.sheet.limits[key])

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import math
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -33,6 +34,7 @@ RULE_KEYS = (
 )
 LIMIT_KEYS = ("value", "unit", "about", "source")
 SHEET_KEYS = ("title", "about", "extends", "drop", "limits", "rule")
+_NUMBER_AND_WORD = re.compile(r"\s*[\d.]+\s*[A-Za-zµ°]+\s*\Z")
 SEVERITIES: tuple[Severity, ...] = ("out of spec", "advisory")
 
 
@@ -159,6 +161,11 @@ def load_sheet(
     return _Builder(raw, path).built()
 
 
+def sheet_from(path: Path, content: Mapping[str, Any]) -> RuleSheet:
+    """A rule sheet whose file has been read already; errors name the file."""
+    return _Builder(_merged(path, (), content), path).built()
+
+
 def _find(name: str, base: Path, where: str) -> Path:
     if name in shipped_sheets():
         return shipped("rules") / f"{name}.toml"
@@ -173,7 +180,7 @@ def _find(name: str, base: Path, where: str) -> Path:
     )
 
 
-def _merged(path: Path, above: tuple[Path, ...]) -> _Raw:
+def _merged(path: Path, above: tuple[Path, ...], content: Mapping[str, Any] | None = None) -> _Raw:
     resolved = path.resolve()
     if resolved in above:
         raise SheetError(
@@ -181,7 +188,9 @@ def _merged(path: Path, above: tuple[Path, ...]) -> _Raw:
             where=str(path),
             found=" → ".join(p.stem for p in (*above, resolved)),
         )
-    content, sha = read_toml(path, SheetError)
+    sha = ""
+    if content is None:
+        content, sha = read_toml(path, SheetError)
     name = path.stem
     _keys(content, SHEET_KEYS, f"{path}", "")
     for key in ("title", "about"):
@@ -278,13 +287,12 @@ def _limit_laid(raw: _Raw, name: str, value: Any, where: str, origin: str) -> No
 
 
 def _override(raw: _Raw, name: str, value: Any, where: str, origin: str) -> None:
+    where = f"{where}.{name}" if where != "--set" else f"--set {name}"
     if name not in raw.limits:
         raise SheetError(
             f'The rule sheet has no limit "{name}".', where=where, advice=nearest(name, raw.limits)
         )
-    _limit_laid(
-        raw, name, value, f"{where}.{name}" if where != "--set" else f"--set {name}", origin
-    )
+    _limit_laid(raw, name, value, where, origin)
 
 
 class _Builder:
@@ -388,7 +396,11 @@ class _Builder:
     def _value(self, value: int | float | str, declared: Unit | None, where: str) -> Expression:
         try:
             number, unit = measure(value)
-        except UnitError:
+        except UnitError as error:
+            if isinstance(value, str) and _NUMBER_AND_WORD.match(value):
+                raise SheetError(
+                    error.message, where=where, found=value, expected=error.expected
+                ) from None
             return self._compiled(value, where)
         if number == 0.0 and unit == ONE and declared is not None:
             unit = declared

@@ -102,7 +102,7 @@ class LineRun:
         values = self.computed.values
         if node.limit is not None and node.limit.expression is not None:
             return node.limit.expression.run(values)
-        return _by_recipe(node, values)
+        return by_recipe(node, values)
 
     def _ping(self, node: Node) -> Any:
         values = self.computed.values
@@ -117,7 +117,7 @@ class LineRun:
             elif node.recipe is not None and node.recipe.whole_line:
                 return self._by_channel(node, values)
             else:
-                found = _by_recipe(node, values)
+                found = by_recipe(node, values)
         return np.broadcast_to(np.asarray(found, dtype=float), (self.n,))
 
     def _column(self, key: str) -> Any:
@@ -128,7 +128,7 @@ class LineRun:
         for channel in self.computed.channels:
             rows = channel.rows
             here = {k: v[rows] if np.ndim(v) else v for k, v in values.items() if k in node.inputs}
-            found[rows] = _by_recipe(node, here)
+            found[rows] = by_recipe(node, here)
         return found
 
     def take(self, batch: BeamBatch) -> None:
@@ -177,7 +177,7 @@ class LineRun:
                 elif node.limit is not None and node.limit.expression is not None:
                     values[key] = node.limit.expression.run(values)
                 else:
-                    values[key] = _by_recipe(node, values, groups)
+                    values[key] = by_recipe(node, values, groups)
             accepted = self._accepted(values, n_rows) if accepted is None else accepted
             for planned in self.beam_rules:
                 self._judge_beams(planned, values, groups, n_rows, pings, accepted)
@@ -188,7 +188,7 @@ class LineRun:
         here = {k: every[k][pings] if np.ndim(every[k]) else every[k] for k in node.inputs}
         if node.limit is not None and node.limit.expression is not None:
             return node.limit.expression.run(here)
-        return here[node.inputs[0]] if node.way == "alias" else _by_recipe(node, here)
+        return here[node.inputs[0]] if node.way == "alias" else by_recipe(node, here)
 
     def _accepted(self, values: Mapping[str, Any], rows: int) -> NDArray[np.bool_] | None:
         if "accepted" not in self.plan.nodes or self.plan.available.makes_beams:
@@ -294,7 +294,8 @@ class _BeamValues(dict[str, Any]):
         return value
 
 
-def _by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = None) -> Any:
+def by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = None) -> Any:
+    """What a node's recipe makes of its inputs' values."""
     recipe = node.recipe
     assert recipe is not None
     if recipe.positional:

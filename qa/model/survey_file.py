@@ -78,6 +78,9 @@ STATED: dict[str, dict[str, Unit | tuple[str, ...] | type[int]]] = {
 }
 """What each table may state of the survey, with its unit, its choices or ``int``."""
 
+SURVEY_TABLES = ("survey", *STATED, "limits", "columns", "lines", "part")
+"""The tables of a survey file."""
+
 _SURVEY_KEYS = ("name", "sheet", "depth_from", "time_zone")
 _COLUMN_KEYS = ("ignore", "hold", "order", "units")
 _LINE_KEYS = ("from", "gap")
@@ -163,8 +166,13 @@ def load_survey_file(path: Path | str) -> SurveyFile:
     """
     path = Path(path)
     raw, sha = read_toml(path, SurveyFileError)
-    survey = SurveyFile(path=path, sha256=sha)
-    _known(raw, ("survey", *STATED, "limits", "columns", "lines", "part"), str(path), "")
+    return survey_from(path, raw, sha)
+
+
+def survey_from(path: Path, raw: Mapping[str, Any], sha256: str = "") -> SurveyFile:
+    """A survey file whose content has been read already; errors name the file."""
+    survey = SurveyFile(path=path, sha256=sha256)
+    _known(raw, SURVEY_TABLES, str(path), "")
     head = _subtable(raw, "survey", path)
     _known(head, _SURVEY_KEYS, str(path), "survey.")
     survey = replace(
