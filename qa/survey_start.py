@@ -225,12 +225,13 @@ def columns_text(
 
 def _files_text(layout: Layout) -> str:
     count = len(layout.files)
+    form = ", or ".join(layout.forms[:3]) + (", or others" if len(layout.forms) > 3 else "")
     names = layout.files[0] if count == 1 else f"{count} files, {layout.files[0]} and others"
     row = "a ping" if layout.grain == "ping" or layout.layout != "long" else "a beam"
     beams = {"list": ", its beams in lists", "wide": ", its beams side by side"}.get(
         layout.layout, ""
     )
-    return f"{names} ({layout.form}; a row is {row}{beams})"
+    return f"{names} ({form}; a row is {row}{beams})"
 
 
 def _layout_lines(layout: Layout) -> list[str]:
@@ -341,9 +342,12 @@ def _waiting_lines(layout: Layout, waits: Waiting, sheet: RuleSheet) -> list[str
     )
     if waits.missing:
         lines += ["", "  Missing, and the rules that wait for it"]
-        for name, rules in sorted(waits.missing.items(), key=lambda item: (-len(item[1]), item[0])):
+        alike: dict[tuple[str, tuple[str, ...]], list[str]] = {}
+        for name, rules in waits.missing.items():
             where = _where_to_say(name, sheet, layout.survey)
-            lines += _wrapped(f"{name}: {where}", "    ", "      ")
+            alike.setdefault((where, rules), []).append(name)
+        for (where, rules), names in sorted(alike.items(), key=lambda item: -len(item[0][1])):
+            lines += _wrapped(f"{', '.join(names)}: {where}", "    ", "      ")
             lines += _wrapped(", ".join(rules), "        ")
     if waits.assumed:
         lines += ["", "  Assumed, since neither logged nor stated"]
@@ -363,7 +367,7 @@ def _where_to_say(name: str, sheet: RuleSheet, survey: SurveyFile) -> str:
     """Where a missing value can be stated."""
     table = _table_of(name)
     if name in sheet.limits:
-        return "a limit, to be stated under [limits]"
+        return "under [limits]"
     if name == "cast":
         return "a sound speed cast, named as profile under [water]"
     if name in survey.stated and name in COLUMNS:

@@ -44,6 +44,7 @@ _WHOLE = 0.8
 """Share of the whole span of depths that a way down or up covers, to be used alone."""
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def read_cast(path: str | Path, survey: SurveyFile | None = None, shown: str = "") -> Cast:
     """Read a sound speed cast from CSV, Parquet or Arrow.
 

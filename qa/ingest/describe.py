@@ -68,15 +68,15 @@ class ColumnDescription:
 
 @dataclass(frozen=True, slots=True)
 class Layout:
-    """Logs that are written alike: same columns, units and form.
+    """Logs whose columns, units and times are alike.
 
-    ``read`` counts the files that were read for ranges and counts, of ``files``; ``failed`` names those that could
+    ``forms`` says in words how the files are written, the first one's way first. ``read`` counts the files that were read for ranges and counts, of ``files``; ``failed`` names those that could
     not be read to their end, with why.
     """
 
     files: tuple[str, ...]
     paths: tuple[Path, ...]
-    form: str
+    forms: tuple[str, ...]
     layout: Literal["long", "list", "wide"]
     grain: Literal["ping", "beam"]
     time: str
@@ -234,7 +234,7 @@ def _layout(group: Sequence[tuple[FileProbe, SurveyFile]], most_bytes: int) -> L
     return Layout(
         files=tuple(found.shown for found, _ in group),
         paths=tuple(Path(found.path) for found, _ in group),
-        form=_form(first),
+        forms=tuple(dict.fromkeys(_form(found) for found, _ in group)),
         layout=first.layout,
         grain=first.grain,
         time=_time_form(first.times),

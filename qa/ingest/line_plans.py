@@ -26,6 +26,7 @@ _EXPECTED = (
 _NAMES = frozenset(("name", "line", "id"))
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def read_line_plan(path: str | Path, shown: str = "") -> LinePlan:
     """Read a line plan from CSV, Parquet or Arrow.
 

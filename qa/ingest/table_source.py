@@ -86,6 +86,8 @@ class TableSource:
             else:
                 self._open_arrow(magic)
             fields = _flat_fields(self.schema)
+            # A damaged name of a time zone shows only when it is asked for.
+            str(self.schema)
         except InputError:
             raise
         except (
