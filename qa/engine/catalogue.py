@@ -419,6 +419,14 @@ quantity(
     formula="the root of target_margin = least_margin",
 )
 
+quantity(
+    "detection_confidence",
+    hits.detection_confidence,
+    unit="1",
+    needs=("guaranteed_hits", "detections_needed", "detection_chance"),
+    source="binomial distribution",
+)
+
 # Soundings
 
 quantity(
