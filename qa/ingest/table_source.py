@@ -83,6 +83,7 @@ class TableSource:
                     int(self._file.metadata.row_group(i).num_rows)
                     for i in range(self._file.metadata.num_row_groups)
                 ]
+                self._check_values()
             else:
                 self._open_arrow(magic)
             fields = _flat_fields(self.schema)
@@ -110,6 +111,19 @@ class TableSource:
             raise _damaged(
                 where, ValueError(f"{self.length} rows stated, {sum(self.groups)} in its parts")
             )
+
+    def _check_values(self) -> None:
+        """Refuse a file whose columns say that they hold more or fewer values than it says it has rows."""
+        columns = range(len(self._file.schema))
+        flat = next(
+            (i for i in columns if not self._file.schema.column(i).max_repetition_level), None
+        )
+        for group, rows in enumerate(self.groups if flat is not None else ()):
+            values = self._file.metadata.row_group(group).column(flat).num_values
+            if values != rows:
+                raise _damaged(
+                    self.where, ValueError(f"{rows} rows stated, {values} values in a column")
+                )
 
     def _open_arrow(self, magic: bytes) -> None:
         if magic[:6] == MAGIC_ARROW:

@@ -24,8 +24,8 @@ from qa.model.errors import InputError
 BLOCK = 1 << 22
 LONGEST_ROW = 1 << 22
 """A longer row is no row of a log: a hole in the file, or a quote never closed."""
-BOMB_BYTES, BOMB_RATIO = 48 << 20, 200
-"""A file that unpacks to more than this many bytes and times its size is refused."""
+BOMB_BYTES, BOMB_RATIO = 1 << 25, 200
+"""A file of which some part unpacks to this many bytes and more than so many times its packed size is refused."""
 
 PACKED = {".gz": "gzip", ".zst": "zstd", ".bz2": "bz2"}
 _NULLS = [
@@ -69,8 +69,10 @@ class RawBatch:
 class _Counted(io.RawIOBase):
     """A packed stream, watched: what unpacks beyond all measure is refused."""
 
-    def __init__(self, stream: IO[bytes], packed: int, where: str) -> None:
-        self._stream, self._packed, self._where, self._read = stream, packed, where, 0
+    def __init__(self, packed: pa.NativeFile, kind: str, where: str) -> None:
+        self._packed, self._where = packed, where
+        self._stream = pa.CompressedInputStream(packed, kind)
+        self._unpacked, self._from = 0, 0
 
     def readable(self) -> bool:
         return True
@@ -85,14 +87,17 @@ class _Counted(io.RawIOBase):
                 found=str(problem).splitlines()[0] if str(problem) else type(problem).__name__,
                 advice="Copy it again from where it came.",
             ) from None
-        self._read += len(data)
-        if self._read > BOMB_BYTES and self._read > BOMB_RATIO * self._packed:
-            raise InputError(
-                f"The file unpacks to more than {BOMB_RATIO} times its size: that is no log.",
-                where=self._where,
-                found=f"over {self._read >> 20} MB out of {self._packed >> 10} kB",
-                advice="If it is a log all the same, unpack it first.",
-            )
+        self._unpacked += len(data)
+        if self._unpacked >= BOMB_BYTES:
+            consumed = self._packed.tell() - self._from
+            if self._unpacked > BOMB_RATIO * consumed:
+                raise InputError(
+                    f"The file unpacks to more than {BOMB_RATIO} times its size: that is no log.",
+                    where=self._where,
+                    found=f"{self._unpacked >> 20} MB out of {consumed >> 10} kB",
+                    advice="If it is a log all the same, unpack it first.",
+                )
+            self._unpacked, self._from = 0, self._packed.tell()
         return data
 
     def close(self) -> None:
@@ -126,8 +131,7 @@ def open_bytes(path: Path, where: str) -> IO[bytes]:
         kind = _packing(path)
         if not kind:
             return path.open("rb")
-        packed = pa.CompressedInputStream(pa.OSFile(str(path), "rb"), kind)
-        return _Counted(packed, path.stat().st_size, where)  # type: ignore[return-value]  # has all that is used of IO
+        return _Counted(pa.OSFile(str(path), "rb"), kind, where)  # type: ignore[return-value]  # has all that is used of IO
     except OSError as problem:
         raise _unreadable(where, problem) from None
 

@@ -383,8 +383,9 @@ def _text_form(texts: list[str], stated: str, where: str, source: str) -> str:
         return {"dmy": "dmy", "mdy": "mdy", "ymd": "ymd1", "yj": "doy", "month": "month"}.get(
             form, "ymd"
         )
-    for form in ("ymd", "ymd1", "packed", "clock", "doy", "month"):
-        if share(form) >= 0.5:
+    shares = {form: share(form) for form in ("ymd", "ymd1", "packed", "clock", "doy", "month")}
+    for form, part in shares.items():
+        if part >= 0.5:
             return form
     if share("dmy") >= 0.5:
         matches = (re.match(r"(\d{1,2})([-/.])(\d{1,2})", t) for t in sample)
@@ -410,6 +411,10 @@ def _text_form(texts: list[str], stated: str, where: str, source: str) -> str:
             found=sample[0],
             advice="Export the year with four digits.",
         )
+    likely = max(shares, key=lambda form: shares[form])
+    if shares[likely] >= 0.1:
+        # most cells are wrecked; the rest are times
+        return likely
     raise InputError(
         f'Column "{source}" is not a time that is known.',
         where=where,

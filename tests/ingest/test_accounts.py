@@ -53,7 +53,7 @@ def logs(draw: st.DrawFn) -> tuple[list[str], dict[int, str], int]:
     """Lines of a log, its wrecked rows by their number in the file, and how many rows are sound."""
     kinds = draw(
         st.lists(
-            st.sampled_from(["sound"] * 6 + sorted(WRECKED) + ["none"]), min_size=1, max_size=60
+            st.sampled_from(["sound"] * 12 + sorted(WRECKED) + ["none"]), min_size=1, max_size=60
         )
     )
     lines, wrecked, sound = ["# exported", HEADER, row(0), row(1)], {}, 2

@@ -48,6 +48,9 @@ def with_units(table: pa.Table, **units: str) -> pa.Table:
 def texts() -> None:
     """Packed and UTF-16 logs."""
     (HERE / "packed.csv.gz").write_bytes(gzip.compress(TEXT.encode(), mtime=0))
+    (HERE / "members.csv.gz").write_bytes(
+        gzip.compress(TEXT[:60].encode(), mtime=0) + gzip.compress(TEXT[60:].encode(), mtime=0)
+    )
     (HERE / "packed.csv.bz2").write_bytes(bz2.compress(TEXT.encode()))
     (HERE / "packed.csv.zst").write_bytes(pa.compress(TEXT.encode(), "zstd", asbytes=True))
     marked = TEXT.replace("depth (m)", "depth (m),water temperature (°C)").replace(
