@@ -119,11 +119,15 @@ def natural(text: str) -> tuple[tuple[int, int, str], ...]:
     >>> sorted(["line10", "line9"], key=natural)
     ['line9', 'line10']
     """
-    return tuple(
-        (0, int(part), "") if part.isdigit() else (1, 0, part.lower())
-        for part in re.split(r"(\d+)", text)
-        if part
-    )
+    return tuple(_part_key(part) for part in re.split(r"([0-9]+)", text) if part)
+
+
+def _part_key(part: str) -> tuple[int, int, str]:
+    if "0" <= part[0] <= "9":
+        # Length and digits sort a number by its size, however long it is.
+        digits = part.lstrip("0")
+        return 0, len(digits), digits
+    return 1, 0, part.lower()
 
 
 def stem(shown: str) -> str:

@@ -88,7 +88,7 @@ class TableSource:
                 self._open_arrow(magic)
             fields = _flat_fields(self.schema)
             # A damaged name of a time zone shows only when it is asked for.
-            str(self.schema)
+            [f.type.tz for _, _, f in fields if pa.types.is_timestamp(f.type)]
         except InputError:
             raise
         except (
