@@ -8,9 +8,10 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
 
+from qa.ingest import open_line, plan_logs
 from qa.ingest.describe import Layout, describe_logs
 from qa.model.errors import InputError
-from qa.model.survey_file import load_survey_file
+from qa.model.survey_file import SurveyFile, load_survey_file
 
 ROOT = Path(__file__).resolve().parent.parent.parent
 SAMPLE = ROOT / "sample_logs"
@@ -258,3 +259,30 @@ def test_a_file_that_ends_in_ruins_is_described_as_far_as_it_goes(tmp_path: Path
 def test_a_path_that_matches_nothing_is_an_error(tmp_path: Path) -> None:
     with pytest.raises(InputError, match="no such file"):
         describe_logs([tmp_path / "none.csv"])
+
+
+CORPUS = ROOT / "tests" / "data" / "ingest"
+
+
+@pytest.mark.parametrize(
+    "path",
+    sorted(p for p in CORPUS.iterdir() if p.is_file() and p.suffix not in (".toml", ".py")),
+    ids=lambda p: p.name,
+)
+def test_a_description_counts_the_rows_that_an_audit_reads(path: Path) -> None:
+    """Every log of the corpus is described where it can be read, and its failure told where it cannot."""
+    found = describe_logs([path])
+    try:
+        lines = [open_line(task, SurveyFile()) for task in plan_logs([path], SurveyFile()).lines]
+        for line in lines:
+            line.ping_table()
+    except InputError as error:
+        told = [*found.failed, *(item for x in found.layouts for item in x.failed)]
+        assert error.message in (told[0].error or "")
+        return
+    (layout,) = found.layouts
+    accounts = [account for line in lines for account in line.accounts()]
+    assert layout.rows_read == sum(account.rows_read for account in accounts)
+    assert layout.rows_rejected <= sum(account.rows_rejected for account in accounts)
+    held = {name for line in lines for name in (*line.ping_table().columns, *line.beam_columns)}
+    assert held <= layout.present
