@@ -944,7 +944,7 @@ def resolution(times: Integers, written: int = 0) -> int:
 def _ticks(gaps: Integers, moving: Integers, step: int) -> bool:
     """Whether intervals show the clock's own step, and not only a steady ping rate with pings left out."""
     if int(moving.min()) == step:
-        return False
+        return float((gaps == step).mean()) < 0.9
     if len(moving) > 2:
         return True
     # two intervals that take turns are a sonar's, two next to each other without order a clock's
