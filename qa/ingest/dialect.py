@@ -173,7 +173,8 @@ def find_dialect(
         first = following[0] if following else header_at + 1
         cells = split_line(lines[first], separator) if following else []
         if cells and _is_units_row(cells):
-            units = tuple(c.strip() for c in cells) + ("",) * (width - len(cells))
+            beside = [c.strip() for c in cells[: len(names)]]
+            units = (*beside, *[""] * (len(names) - len(beside)))
             later = [n for n in following if n > first]
             first = later[0] if later else first + 1
     body = [split_line(line, separator) for n, line in data if n >= first][:400]

@@ -258,8 +258,8 @@ class Campaign:
     first: int = 0
     kinds: Counter[str] = field(default_factory=Counter)
     failures: list[Outcome] = field(default_factory=list)
-    most_bytes: int = 0
-    most_seconds: float = 0.0
+    most_bytes: tuple[int, int] = (0, -1)
+    most_seconds: tuple[float, int] = (0.0, -1)
     rows: int = 0
 
     def run(self) -> bool:
@@ -322,14 +322,15 @@ class Campaign:
         seconds = _work_done(worker.process.pid or 0)[0] - worker.work
         if worker.done:
             # The first file also loads the libraries.
-            self.most_seconds = max(self.most_seconds, seconds)
+            self.most_seconds = max(self.most_seconds, (seconds, outcome.number))
             if seconds > MOST_SECONDS and outcome.kind in ("read", "refused"):
                 outcome = Outcome(outcome.number, "too slow", f"{seconds:.1f} s of work")
         if outcome.bytes > MOST_BYTES and outcome.kind in ("read", "refused"):
             outcome = Outcome(
                 outcome.number, "too much memory", f"{outcome.bytes / 1e6:.0f} MB", outcome.bytes
             )
-        self.most_bytes, worker.done = max(self.most_bytes, outcome.bytes), worker.done + 1
+        self.most_bytes = max(self.most_bytes, (outcome.bytes, outcome.number))
+        worker.done += 1
         worker.tired = worker.done >= LIFE or outcome.bytes > HEAVY
         self.rows += outcome.rows
         if outcome.kind in ("read", "refused"):
@@ -373,8 +374,8 @@ class Campaign:
             + ", ".join(f"{n} {k}" for k, n in self.kinds.most_common())
         ]
         lines.append(
-            f"{self.rows} rows read and accounted for; at most {self.most_seconds:.2f} s of work and "
-            f"{self.most_bytes / 1e6:.0f} MB for one file"
+            f"{self.rows} rows read and accounted for; at most {self.most_seconds[0]:.2f} s of work (file "
+            f"{self.most_seconds[1]}) and {self.most_bytes[0] / 1e6:.0f} MB (file {self.most_bytes[1]})"
         )
         for outcome in self.failures[:20]:
             last = outcome.told.strip().splitlines()[-1][:150] if outcome.told.strip() else ""
