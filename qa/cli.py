@@ -250,6 +250,35 @@ def check(
     raise typer.Exit(2 if wrong else 0)
 
 
+@app.command()
+def settings(
+    survey: Survey = None,
+    sheet: Sheet = None,
+    depth: Annotated[
+        str | None,
+        typer.Option("--depth", help="Depths to work at, as in 10m..40m.", show_default=False),
+    ] = None,
+    hold: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--hold", help="A setting that stays, as in --hold speed=4kt.", show_default=False
+        ),
+    ] = None,
+    limits: Limits = None,
+) -> None:
+    """Which settings of the stated sonar satisfy a sheet, or which of its rules conflict.
+
+    Exit status: 0 some settings satisfy everything, 1 none do, 2 something needed is not stated.
+    """
+    from qa.settings import asked_for, text
+
+    answer = asked_for(
+        survey, sheet, depth, _overrides(hold or [], "--hold"), _overrides(limits or [])
+    )
+    typer.echo(text(answer))
+    raise typer.Exit(0 if answer.satisfied else 1)
+
+
 def _width() -> int:
     import shutil
 

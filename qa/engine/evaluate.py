@@ -54,6 +54,7 @@ def evaluate_line(
     files: Sequence[str] = (),
     rows: int = BATCH_ROWS,
     cast: Cast | None = None,
+    sections: bool = True,
 ) -> LineResult:
     """Everything about one line.
 
@@ -71,6 +72,8 @@ def evaluate_line(
         Beams a batch holds, about; no result depends on it.
     cast : Cast, optional
         Speed of sound down the water, as the survey file's profile says it.
+    sections : bool
+        Whether to make sections, with their texts; without them misses are only counted.
     """
     table = log.ping_table()
     kind, assumed_kind = line_kind(log, survey)
@@ -97,7 +100,7 @@ def evaluate_line(
             at += length
         runs.append(LineRun(make_plan(sheet, available, EXTRA), table, rows_of, tuple(spans)))
     done = run_stages(log, runs, rows)
-    return _Assembly(log.name, kind, table, sheet, done, tuple(files)).result()
+    return _Assembly(log.name, kind, table, sheet, done, tuple(files)).result(sections)
 
 
 def line_kind(log: LineLog, survey: SurveyFile) -> tuple[str, bool]:
@@ -233,7 +236,7 @@ class _Assembly:
                 values[channel.rows] = np.interp(at, known, here[known], left=np.nan, right=np.nan)
         return values
 
-    def result(self) -> LineResult:
+    def result(self, with_sections: bool) -> LineResult:
         """The line's findings, sections and series."""
         series: dict[str, RuleSeries] = {}
         rules: list[LineRule] = []
@@ -250,7 +253,7 @@ class _Assembly:
                 if assessed.any() and not np.isnan(found.limit[assessed]).all():
                     limits = found.limit[assessed]
                     ranges[rule.id] = (float(np.nanmin(limits)), float(np.nanmax(limits)))
-            rule_finding, rule_sections = self._judged(rule, planned, found)
+            rule_finding, rule_sections = self._judged(rule, planned, found, with_sections)
             rules.append(rule_finding)
             sections += rule_sections
         sections.sort(key=lambda s: (s.severity != "out of spec", s.first_index, s.channel, s.rule))
@@ -292,7 +295,11 @@ class _Assembly:
         return whole
 
     def _judged(
-        self, rule: Rule, planned: Sequence[PlannedRule], series: RuleSeries | None
+        self,
+        rule: Rule,
+        planned: Sequence[PlannedRule],
+        series: RuleSeries | None,
+        with_sections: bool,
     ) -> tuple[LineRule, list[Section]]:
         if series is None:
             reason = rule.not_from_pings or self._missing_reason(planned)
@@ -306,7 +313,9 @@ class _Assembly:
             ), []
         out = missed / assessed > rule.allow
         verdict: Verdict = "out of spec" if out and rule.severity == "out of spec" else "in spec"
-        sections = self._sections(rule, planned, series, assessed, within=not out)
+        sections = (
+            self._sections(rule, planned, series, assessed, within=not out) if with_sections else []
+        )
         stray = missed - sum(s.pings_missed for s in sections)
         reason = self._reason(rule, assessed, missed, stray, out)
         absent = sorted({name for p in planned for name in p.absent})

@@ -10,7 +10,7 @@ import math
 import re
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import lru_cache
+from functools import cache, lru_cache
 from typing import Any
 
 import numpy as np
@@ -49,13 +49,18 @@ class Unit:
         return self.power(Fraction(1, degree))
 
     def __str__(self) -> str:
-        if self == HERTZ:
-            return "Hz"
-        above = [_raised(b, e) for b, e in zip(BASES, self.exponents, strict=True) if e > 0]
-        below = [_raised(b, -e) for b, e in zip(BASES, self.exponents, strict=True) if e < 0]
-        if not above and not below:
-            return "1"
-        return "/".join(["·".join(above) or "1", *below])
+        return _written(self.exponents)
+
+
+@cache
+def _written(exponents: tuple[Fraction, ...]) -> str:
+    if exponents == HERTZ.exponents:
+        return "Hz"
+    above = [_raised(b, e) for b, e in zip(BASES, exponents, strict=True) if e > 0]
+    below = [_raised(b, -e) for b, e in zip(BASES, exponents, strict=True) if e < 0]
+    if not above and not below:
+        return "1"
+    return "/".join(["·".join(above) or "1", *below])
 
 
 def _raised(base: str, exponent: Fraction) -> str:
