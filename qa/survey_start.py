@@ -353,10 +353,11 @@ def _waiting_lines(layout: Layout, waits: Waiting, sheet: RuleSheet) -> list[str
         lines += ["", "  Assumed, since neither logged nor stated"]
         pairs = [f"{name} {value}" for name, value in waits.assumed.items()]
         lines += _wrapped(", ".join(pairs), "    ")
-    rest = [n for n in layout.missing if n not in waits.missing and n not in waits.assumed]
-    if rest:
-        lines += ["", "  Not logged, and no rule waits for it"]
-        lines += _wrapped(", ".join(rest), "    ")
+    others = [n for n in layout.missing if n not in waits.missing and n not in waits.assumed]
+    for title, stated in (("stated", True), ("no rule waits for it", False)):
+        names = [n for n in others if (n in layout.survey.stated) is stated]
+        if names:
+            lines += ["", f"  Not logged, and {title}", *_wrapped(", ".join(names), "    ")]
     if waits.never:
         lines += ["", "  Rules that no log of pings can show"]
         lines += _wrapped(", ".join(waits.never), "    ")

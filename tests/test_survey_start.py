@@ -195,5 +195,14 @@ def test_a_file_that_is_there_is_left_as_it_was(tmp_path: Path) -> None:
         sample_start().write(target)
 
 
+def test_what_is_stated_is_not_called_missing() -> None:
+    _, text = run(
+        SAMPLE / "multibeam" / "VH101_approach.parquet", "--survey", SAMPLE / "survey.toml"
+    )
+    stated = text.partition("Not logged, and stated")[2].partition("Not logged, and no rule")[0]
+    assert {"frequency", "pulse_length"} <= set(re.findall(r"\w+", stated))
+    assert "frequency:" not in text
+
+
 def test_quiet_prints_nothing() -> None:
     assert run(LOG, "--quiet") == (0, "")
