@@ -163,6 +163,9 @@ class RowReader:
 
     def _time_kind(self) -> pa.DataType:
         plan = self.probe.times
+        if plan.kind == "text" and plan.text_form == "ymd" and len(plan.bindings) == 1:
+            # ISO 8601 is read as such; a cell that is none turns the column into texts from there on
+            return pa.timestamp("ns", "UTC" if plan.zoned else None)
         whole = plan.kind == "number" and float(round(plan.step)) == plan.step and plan.step >= 1
         return pa.int64() if whole and not plan.decimal_comma else pa.string()
 

@@ -62,7 +62,7 @@ class TimePlan:
     ``kind``: "instant" (a timestamp type), "number" (a count of ``step`` ns since ``origin``), "text", or "parts".
     ``text_form`` is the key of the pattern that dates match. ``offset`` is a fixed offset in ns of times that
     carry none, ``zone`` a time zone's name, for the rest. ``written`` is the step of the last digit written, in ns; 0
-    where that is not known.
+    where that is not known. ``zoned`` says that texts end in a time zone.
     """
 
     kind: str
@@ -75,6 +75,7 @@ class TimePlan:
     rolls_over: bool = False
     notes: tuple[str, ...] = ()
     written: int = 0
+    zoned: bool = False
 
     @property
     def sources(self) -> tuple[str, ...]:
@@ -138,7 +139,7 @@ def plan_times(
     if plan.kind == "text" and not any(t.count(":") > 1 or "." in t or "," in t for t in texts):
         # hours and minutes, or digits without marks: the digits do not tell
         return plan
-    return replace(plan, written=written_step(texts, unit))
+    return replace(plan, written=written_step(texts, unit), zoned=_zoned(texts))
 
 
 def _plan(
@@ -508,6 +509,8 @@ def convert_times(
         return _from_numbers(arrays[0], plan, state)
     if plan.kind == "parts":
         return _from_parts(plan, arrays, state)
+    if len(arrays) == 1 and pa.types.is_timestamp(arrays[0].type):
+        return _from_instants(arrays[0], plan.zone, state)
     texts = [a if pa.types.is_string(a.type) else a.cast(pa.string()) for a in arrays]
     joined = texts[0] if len(texts) == 1 else pc.binary_join_element_wise(*texts, " ")
     return _from_texts(joined, plan.text_form, plan.zone, state)
