@@ -86,7 +86,8 @@ class Reader:
     def read(self, number: int) -> Outcome:
         """What comes of one mutant."""
         seed, name, content, rng = self.file(number)
-        path = self.folder / name
+        # A name of its own: where a file that is still mapped cannot be removed, the next one is not in its way.
+        path = self.folder / f"{number}-{name}"
         path.write_bytes(content)
         survey = self._survey(seed)
         _reset_peak()
@@ -108,7 +109,8 @@ class Reader:
             except BaseException:
                 found = Outcome(number, "a traceback", traceback.format_exc())
         sys.unraisablehook = heard
-        path.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):
+            path.unlink(missing_ok=True)
         if unraised:
             found = Outcome(number, "an exception that nobody heard", "\n".join(unraised))
         if caught and found.kind in ("read", "refused"):
