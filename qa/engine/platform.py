@@ -54,7 +54,7 @@ def number_step(ping: Floats) -> Floats:
     return found
 
 
-def seconds_unchanged(time: Times, *values: Floats) -> Floats:
+def seconds_unchanged(time: Times, *values: Floats) -> tuple[Floats, NDArray[np.int64]]:
     """How long each ping's values have been and will be the same to the last digit, together.
 
     Parameters
@@ -66,20 +66,22 @@ def seconds_unchanged(time: Times, *values: Floats) -> Floats:
 
     Returns
     -------
-    ndarray of float64, shape (n,)
+    duration : ndarray of float64, shape (n,)
         Duration of the run that the ping belongs to, no interval counted for more than three times the
         line's median; NaN where a value is missing. [s]
+    run : ndarray of int64, shape (n,)
+        Number of that run.
     """
     n = len(time)
     if not n:
-        return np.zeros(0)
+        return np.zeros(0), np.zeros(0, dtype=np.int64)
     known = np.ones(n, dtype=bool)
     same = np.ones(max(n - 1, 0), dtype=bool)
     for value in values:
         value = np.broadcast_to(value, (n,))
         known &= ~np.isnan(value)
         same &= value[1:] == value[:-1]
-    run = np.concatenate([[0], np.cumsum(~same)])
+    run = np.concatenate([np.zeros(1, dtype=np.int64), np.cumsum(~same)])
     first = np.searchsorted(run, run, side="left")
     last = np.searchsorted(run, run, side="right") - 1
     step = np.maximum(np.diff(time) / 1e9, 0.0)
@@ -87,7 +89,7 @@ def seconds_unchanged(time: Times, *values: Floats) -> Floats:
     usual = float(np.median(step[step > 0])) if (step > 0).any() else 0.0
     elapsed = np.concatenate([[0.0], np.cumsum(np.minimum(step, 3.0 * usual))])
     duration = elapsed[last] - elapsed[first]
-    return np.where(known, duration, np.nan)
+    return np.where(known, duration, np.nan), run
 
 
 def frozen_seconds(time: Times, *values: Floats) -> Floats:
@@ -97,17 +99,13 @@ def frozen_seconds(time: Times, *values: Floats) -> Floats:
     longest. NaN on a line whose values never change: whether they are stuck cannot be told. A run of fewer than ten pings is
     0 too: a gap between two pings that happen to agree has stopped nothing.
     """
-    unchanged = seconds_unchanged(time, *values)
-    known = unchanged[~np.isnan(unchanged)]
-    if not len(known):
-        return unchanged
-    starts = np.concatenate([[True], np.diff(unchanged) != 0])
-    runs = unchanged[starts & ~np.isnan(unchanged)]
+    unchanged, run = seconds_unchanged(time, *values)
+    starts = np.searchsorted(run, np.arange(run[-1] + 1)) if len(run) else run
+    runs = unchanged[starts][~np.isnan(unchanged[starts])]
     if len(runs) < 2:
         return np.full(len(unchanged), np.nan)
     usual = float(np.quantile(runs, 0.95) if len(runs) >= 20 else np.sort(runs)[-2])
-    first = np.maximum.accumulate(np.where(starts, np.arange(len(starts)), 0))
-    pings = np.bincount(first, minlength=len(starts))[first]
+    pings = np.bincount(run)[run]
     with np.errstate(invalid="ignore"):
         stuck = (unchanged > FROZEN_FACTOR * usual) & (pings >= FEWEST_FROZEN)
         return np.where(np.isnan(unchanged), np.nan, np.where(stuck, unchanged, 0.0))

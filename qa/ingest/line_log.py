@@ -750,7 +750,7 @@ class OpenedLine:
 
         Ping numbers decide only where they bring the times into better order: a counter that starts again, or a
         clock that steps back, leaves the order of the file. Where neither helps, and times fall so often that rows
-        must have been shuffled, the times decide.
+        must have been shuffled, the times decide: unless ping numbers never fall, for then it is the clock that does.
         """
         rank = np.array(_ranks(names.channel.names) or [0], dtype=np.int64)
         ordered: list[Integers] = []
@@ -759,11 +759,12 @@ class OpenedLine:
             rows = np.flatnonzero(kept & (channel == code))
             by = ""
             falls = _falls(time[rows])
-            if falls and logged and (np.diff(ping[rows]) < 0).any():
+            counted = logged and not (np.diff(ping[rows]) < 0).any()
+            if falls and logged and not counted:
                 by_ping = rows[np.argsort(ping[rows], kind="stable")]
                 if _falls(time[by_ping]) < falls:
                     rows, by, falls = by_ping, "ping numbers", _falls(time[by_ping])
-            if falls and (
+            if (falls and not counted) and (
                 (not logged and len(self._parts) > 1)
                 or (falls > 1 and falls > SHUFFLED_SHARE * (len(rows) - 1))
             ):

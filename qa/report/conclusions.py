@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import textwrap
 from collections import defaultdict
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
@@ -376,9 +377,7 @@ def summary(findings: Findings, worst: int = 5) -> str:
     if soundings and soundings != pings:
         counted.append(word("counted.soundings", n=soundings))
     rows = [", ".join(counted), found.headline(), ""]
-    width = max((len(r.id) for r in findings.rules), default=0)
-    for rule in findings.rules:
-        rows.append(f"  {rule.id:<{width}}  {rule.verdict:<12}  {_told(rule)}".rstrip())
+    rows += _verdicts(findings.rules)
     failing = sorted(found.failing, key=lambda n: (_margin(findings.sections[n]), n))
     if failing:
         rows += ["", word("summary.worst")]
@@ -401,6 +400,35 @@ def summary(findings: Findings, worst: int = 5) -> str:
     rows += ["", word("cautions.short")]
     # A terminal or a pipe may know no more than its code page.
     return "\n".join(rows).replace(numbers.THIN, "").replace(numbers.MINUS, "-")
+
+
+def _verdicts(rules: Sequence[RuleFinding], told: int = 6) -> list[str]:
+    """Rules by verdict: those missed each on a line, those met by name, those not assessed with their reason if few."""
+    out = [r for r in rules if r.verdict == "out of spec"]
+    noted = [r for r in rules if r.verdict == "in spec" and r.pings_missed]
+    met = [r for r in rules if r.verdict == "in spec" and not r.pings_missed]
+    lacking = [r for r in rules if r.verdict == "not assessed"]
+    each = lacking if len(lacking) <= told else []
+    width = max((len(r.id) for r in [*out, *noted, *each]), default=0)
+
+    def listed(some: Sequence[RuleFinding]) -> list[str]:
+        return [f"  {r.id:<{width}}  {r.verdict:<12}  {_told(r)}".rstrip() for r in some]
+
+    rows = [*listed(out), *listed(noted), *listed(each)]
+    names = {word("summary.met", n=len(met)): met}
+    if not each:
+        names[word("summary.lacking", n=len(lacking))] = lacking
+    for title, some in names.items():
+        if some:
+            text = f"{title} {', '.join(r.id for r in some)}"
+            rows += textwrap.wrap(
+                text,
+                100,
+                initial_indent="  ",
+                subsequent_indent="    ",
+                break_on_hyphens=False,
+            )
+    return rows
 
 
 def clipped(text: str, most: int = 60) -> str:
