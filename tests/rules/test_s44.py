@@ -105,6 +105,11 @@ def test_soundings_lie_no_farther_apart_than_three_depths_or_25_m(
     assert limit(order, "sounding_distance", depth) == pytest.approx(distance)
 
 
+@pytest.mark.parametrize("order", ["s44-exclusive", "s44-special"])
+def test_orders_that_demand_full_coverage_have_no_distance_between_soundings(order: str) -> None:
+    assert "sounding-distance" not in sheet_of(order).rules
+
+
 @pytest.mark.parametrize("order", ["s44-1b", "s44-2"])
 def test_the_distance_between_soundings_is_a_requirement_where_coverage_is_partial(
     order: str,
@@ -124,7 +129,13 @@ def test_what_order_1a_allows_at_37_m_is_one_page() -> None:
 @pytest.mark.parametrize("order", ORDERS)
 def test_what_a_ping_log_cannot_show_is_listed_with_its_clause(order: str) -> None:
     rules = sheet_of(order).rules
-    for name in ("feature-search", "bathymetric-coverage", "water-levels", "metadata"):
+    for name in (
+        "feature-search",
+        "bathymetric-coverage",
+        "cross-lines",
+        "water-levels",
+        "metadata",
+    ):
         assert rules[name].not_from_pings
         assert rules[name].clause
     assert rules["vertical-uncertainty"].clause.startswith("Table 1")
