@@ -75,6 +75,11 @@ def check_file(path: str | Path) -> Checked:
     return Checked(given, "", (neither,))
 
 
+def schema_paths() -> list[Path]:
+    """Where the JSON Schemas of rule sheets and of survey files lie, for editors."""
+    return [shipped("reports") / f"{name}.schema.json" for name in ("sheet", "survey")]
+
+
 def meant_as(content: Mapping[str, Any]) -> Meant:
     """Whether a file's top keys are those of a rule sheet or of a survey file.
 

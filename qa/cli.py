@@ -232,17 +232,29 @@ def explain(
 
 @app.command()
 def check(
-    files: Annotated[list[Path], typer.Argument(help="Rule sheets or survey files.")],
+    files: Annotated[
+        list[Path] | None,
+        typer.Argument(help="Rule sheets or survey files.", show_default=False),
+    ] = None,
+    schemas: Annotated[
+        bool,
+        typer.Option("--schemas", help="Print where the JSON Schemas for editors lie."),
+    ] = False,
     quiet: Quiet = False,
 ) -> None:
     """Whether rule sheets and survey files are valid: one message for each mistake.
 
     Exit status: 0 all are valid, 2 otherwise.
     """
-    from qa.checking import check_file
+    from qa.checking import check_file, schema_paths
 
+    if schemas:
+        for path in schema_paths():
+            typer.echo(str(path))
+    elif not files:
+        raise PingworthyError("No file to check.", where="check", expected="pingworthy check FILE…")
     wrong = False
-    for file in files:
+    for file in files or []:
         found = check_file(file)
         wrong = wrong or bool(found.mistakes)
         if found.mistakes or not quiet:

@@ -226,3 +226,15 @@ def test_a_valid_sheet_says_what_it_holds(tmp_path: Path) -> None:
     )
     text = str(check_file(path))
     assert "1 of them its own and 1 changed; it extends physics" in text
+
+
+def test_check_tells_where_the_schemas_for_editors_lie() -> None:
+    done = pingworthy("check", "--schemas")
+    assert done.exit_code == 0
+    paths = [Path(line) for line in done.stdout.split("\n") if line]
+    assert [p.name for p in paths] == ["sheet.schema.json", "survey.schema.json"]
+    assert all(p.is_file() for p in paths)
+
+
+def test_check_of_no_file_is_refused() -> None:
+    assert isinstance(pingworthy("check").exception, PingworthyError)

@@ -81,12 +81,15 @@ STATED: dict[str, dict[str, Unit | tuple[str, ...] | type[int]]] = {
 SURVEY_TABLES = ("survey", *STATED, "limits", "columns", "lines", "part")
 """The tables of a survey file."""
 
-_SURVEY_KEYS = ("name", "sheet", "depth_from", "time_zone")
-_COLUMN_KEYS = ("ignore", "hold", "order", "units")
-_LINE_KEYS = ("from", "gap")
-_PART_KEYS = ("logs", "depth_from", "time_zone")
+SURVEY_KEYS = ("name", "sheet", "depth_from", "time_zone")
+MORE_KEYS: dict[str, tuple[str, ...]] = {"water": ("profile",), "vessel": ("time_zone",)}
+"""What tables hold beside what they state."""
+
+COLUMN_KEYS = ("ignore", "hold", "order", "units")
+LINE_KEYS = ("from", "gap")
+PART_KEYS = ("logs", "depth_from", "time_zone")
 DepthFrom = Literal["waterline", "transducer", "datum"]
-_DEPTH_FROM = ("waterline", "transducer", "datum")
+DEPTH_FROM = ("waterline", "transducer", "datum")
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,7 +177,7 @@ def survey_from(path: Path, raw: Mapping[str, Any], sha256: str = "") -> SurveyF
     survey = SurveyFile(path=path, sha256=sha256)
     _known(raw, SURVEY_TABLES, str(path), "")
     head = _subtable(raw, "survey", path)
-    _known(head, _SURVEY_KEYS, str(path), "survey.")
+    _known(head, SURVEY_KEYS, str(path), "survey.")
     survey = replace(
         survey,
         name=_text(head, "name", path, "survey."),
@@ -198,7 +201,7 @@ def survey_from(path: Path, raw: Mapping[str, Any], sha256: str = "") -> SurveyF
         place = f"part {number}."
         if not isinstance(part, dict):
             raise SurveyFileError("Not a table.", where=f"{path}: part {number}", found=repr(part))
-        _known(part, (*_PART_KEYS, *STATED, "limits", "columns", "lines"), str(path), place)
+        _known(part, (*PART_KEYS, *STATED, "limits", "columns", "lines"), str(path), place)
         logs = part.get("logs", [])
         logs = [logs] if isinstance(logs, str) else logs
         if not logs or not all(isinstance(log, str) for log in logs):
@@ -315,15 +318,14 @@ def _overlaid(base: SurveyFile, tables: Mapping[str, Any], prefix: str = "") -> 
     if "depth_from" in tables:
         given.add("survey.depth_from")
         changes["depth_from"] = _choice(
-            tables["depth_from"], _DEPTH_FROM, f"{path}: {prefix}depth_from"
+            tables["depth_from"], DEPTH_FROM, f"{path}: {prefix}depth_from"
         )
     if "time_zone" in tables:
         changes["time_zone"] = _zone(tables["time_zone"], f"{path}: {prefix}time_zone")
     stated = dict(base.stated)
     for name, keys in STATED.items():
         table = _subtable(tables, name, path)
-        extra = {"water": ("profile",), "vessel": ("time_zone",)}.get(name, ())
-        _known(table, (*keys, *extra), str(path), f"{prefix}{name}.")
+        _known(table, (*keys, *MORE_KEYS.get(name, ())), str(path), f"{prefix}{name}.")
         for key, value in table.items():
             where = f"{path}: {prefix}{name}.{key}"
             given.add(f"{name}.{key}")
@@ -343,7 +345,7 @@ def _overlaid(base: SurveyFile, tables: Mapping[str, Any], prefix: str = "") -> 
         )
     if "lines" in tables:
         table = _subtable(tables, "lines", path)
-        _known(table, _LINE_KEYS, str(path), f"{prefix}lines.")
+        _known(table, LINE_KEYS, str(path), f"{prefix}lines.")
         source = _choice(
             table.get("from", base.lines.source),
             ("file", "column", "gap"),
@@ -414,13 +416,13 @@ def _stated_value(
 def _columns(base: ColumnChoices, table: Mapping[str, Any], where: str) -> ColumnChoices:
     names, units = dict(base.names), dict(base.units)
     for key, value in table.items():
-        if key in _COLUMN_KEYS:
+        if key in COLUMN_KEYS:
             continue
         if key not in COLUMNS:
             raise SurveyFileError(
                 "Not a canonical column.",
                 where=f"{where}{key}",
-                advice=nearest(key, (*COLUMNS, *_COLUMN_KEYS)),
+                advice=nearest(key, (*COLUMNS, *COLUMN_KEYS)),
             )
         if not isinstance(value, str):
             raise SurveyFileError(
