@@ -8,6 +8,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from qa.engine.quantities import quantity
     from qa.engine.sheets import load_sheet
     from qa.ingest import read_log
     from qa.job import audit
@@ -16,13 +17,22 @@ if TYPE_CHECKING:
 
 __version__ = "0.1.0"
 
-__all__ = ["Findings", "__version__", "audit", "load_sheet", "load_survey_file", "read_log"]
+__all__ = [
+    "Findings",
+    "__version__",
+    "audit",
+    "load_sheet",
+    "load_survey_file",
+    "quantity",
+    "read_log",
+]
 
 _PLACES = {
     "Findings": "qa.model.findings",
     "audit": "qa.job",
     "load_sheet": "qa.engine.sheets",
     "load_survey_file": "qa.model.survey_file",
+    "quantity": "qa.engine.quantities",
     "read_log": "qa.ingest",
 }
 

@@ -13,7 +13,8 @@ from pathlib import Path
 from typing import Any, Literal
 
 from qa.engine.sheets import SHEET_KEYS, load_sheet, sheet_from, shipped_sheets
-from qa.model.errors import PingworthyError, SheetError, SurveyFileError
+from qa.engine.user_quantities import allowed_python, check_inputs, use_python
+from qa.model.errors import InputError, PingworthyError, SheetError, SurveyFileError
 from qa.model.shipped import shipped
 from qa.model.survey_file import SURVEY_TABLES, SurveyFile, read_toml, survey_from
 
@@ -40,13 +41,15 @@ class Checked:
         return "\n".join([head, *(f"  {text}" for text in told)])
 
 
-def check_file(path: str | Path) -> Checked:
+def check_file(path: str | Path, allow_python: bool = False) -> Checked:
     """Check one rule sheet or survey file.
 
     Parameters
     ----------
     path : str or Path
         The file, or the name of a shipped sheet.
+    allow_python : bool
+        Whether the Python file that a survey file names, if any, may be run.
 
     Returns
     -------
@@ -56,7 +59,7 @@ def check_file(path: str | Path) -> Checked:
     if str(path) in shipped_sheets() and not given.exists():
         given = shipped("rules") / f"{path}.toml"
     try:
-        content, sha = read_toml(given, PingworthyError)
+        content, _ = read_toml(given, PingworthyError)
     except PingworthyError as error:
         return Checked(given, "", (error,))
     meant = meant_as(content)
@@ -64,7 +67,9 @@ def check_file(path: str | Path) -> Checked:
         mistakes = _mistakes(given, content, lambda left: sheet_from(given, left))
         return Checked(given, meant, mistakes, "" if mistakes else _sheet_holds(given))
     if meant == "survey file":
-        mistakes = _mistakes(given, content, lambda left: _survey(given, left, sha, content))
+        mistakes = _mistakes(
+            given, content, lambda left: _survey(given, left, allow_python, content)
+        )
         return Checked(given, meant, mistakes, "" if mistakes else _survey_holds(given))
     neither = PingworthyError(
         "Neither a rule sheet nor a survey file.",
@@ -98,10 +103,13 @@ def meant_as(content: Mapping[str, Any]) -> Meant:
     return "survey file" if "limits" in content else ""
 
 
-def _survey(path: Path, content: Mapping[str, Any], sha: str, original: Mapping[str, Any]) -> None:
-    facts = survey_from(path, content, sha)
-    # Limits are those of a sheet: where the sheet itself is a mistake, nothing is known of them.
-    if _named_sheet(content) == _named_sheet(original):
+def _survey(
+    path: Path, content: Mapping[str, Any], allow_python: bool, original: Mapping[str, Any]
+) -> None:
+    facts = survey_from(path, content)
+    _run_python(facts, allow_python)
+    # Limits are those of a sheet: where the sheet, or what it needs, is a mistake, nothing is known of them.
+    if all(_head(content, key) == _head(original, key) for key in ("sheet", "python")):
         _sheet_of(facts, {}, "")
         for number, (patterns, tables) in enumerate(facts.parts, start=1):
             own = tables.get("limits", {})
@@ -119,16 +127,31 @@ def _survey(path: Path, content: Mapping[str, Any], sha: str, original: Mapping[
             ) from None
 
 
-def _named_sheet(content: Mapping[str, Any]) -> Any:
+def _run_python(facts: SurveyFile, allow: bool) -> None:
+    try:
+        use_python(allowed_python(facts, allow))
+    except InputError as error:
+        raise SurveyFileError(
+            "The Python file cannot be used.",
+            where=f"{facts.path}: survey.python",
+            found=str(error),
+        ) from None
+
+
+def _head(content: Mapping[str, Any], key: str) -> Any:
     head = content.get("survey", {})
-    return head.get("sheet") if isinstance(head, Mapping) else None
+    return head.get(key) if isinstance(head, Mapping) else None
 
 
 def _sheet_of(facts: SurveyFile, limits: Mapping[str, Any], part: str) -> None:
     """The sheet under the limits of the file, or of one part: a limit of the part's own is told as that."""
     here = f"{facts.path}: "
     try:
-        load_sheet(facts.sheet or "physics", facts, None, facts.folder)
+        check_inputs(load_sheet(facts.sheet or "physics", facts, None, facts.folder))
+    except InputError as error:
+        raise SurveyFileError(
+            "The Python file cannot be used.", where=f"{here}survey.python", found=str(error)
+        ) from None
     except SheetError as error:
         place = error.where.removeprefix(here)
         if not error.where.startswith(here):

@@ -69,6 +69,13 @@ PagesChoice = Annotated[
     str,
     typer.Option("--pages", help="Lines in the report or on their own pages: auto, one or many."),
 ]
+AllowPython = Annotated[
+    bool,
+    typer.Option(
+        "--allow-python",
+        help="Run the Python file of quantities that the survey file names. Read it first: it is a program.",
+    ),
+]
 Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but errors.")]
 
 
@@ -98,13 +105,17 @@ def audit(
     workers: Workers = None,
     require_assessed: RequireAssessed = False,
     pages: PagesChoice = "auto",
+    allow_python: AllowPython = False,
     quiet: Quiet = False,
 ) -> None:
     """Audit logs: which stretches of which lines are out of spec, why, and what to set for the re-run.
 
     Exit status: 0 nothing out of spec, 1 something is, 2 an input could not be used, 3 an error of the program.
     """
-    _audit(list(logs), survey, sheet, out, limits, day, workers, require_assessed, pages, quiet)
+    _audit(
+        list(logs),
+        *(survey, sheet, out, limits, day, workers, require_assessed, pages, quiet, allow_python),
+    )
 
 
 @app.command()
@@ -161,6 +172,7 @@ def columns(
         Path | None,
         typer.Option("--write", help="Write a survey file to start from.", show_default=False),
     ] = None,
+    allow_python: AllowPython = False,
     quiet: Quiet = False,
 ) -> None:
     """What is recognised in logs, what is missing, and which rules that keeps from being assessed.
@@ -171,7 +183,7 @@ def columns(
 
     if write is not None:
         new_file(write)
-    found = describe(list(logs), survey, sheet)
+    found = describe(list(logs), survey, sheet, allow_python)
     if not quiet:
         typer.echo(found.text())
     if write is not None:
@@ -191,12 +203,16 @@ LogOf = Annotated[
 
 @app.command()
 def rules(
-    sheet: Sheet = None, survey: Survey = None, limits: Limits = None, log: LogOf = None
+    sheet: Sheet = None,
+    survey: Survey = None,
+    limits: Limits = None,
+    log: LogOf = None,
+    allow_python: AllowPython = False,
 ) -> None:
     """Every rule of a sheet: what it requires, its limits and where they come from."""
     from qa.rule_pages import rules_text
 
-    typer.echo(rules_text(sheet, survey, _overrides(limits or []), log, _width()))
+    typer.echo(rules_text(sheet, survey, _overrides(limits or []), log, _width(), allow_python))
 
 
 @app.command()
@@ -220,14 +236,14 @@ def explain(
     ] = None,
     limits: Limits = None,
     log: LogOf = None,
+    allow_python: AllowPython = False,
 ) -> None:
     """A rule, limit or quantity in full: what it checks, why, what to do, formula, inputs, units, source."""
     from qa.rule_pages import explain_text
 
     given = _overrides(values or [], "NAME=VALUE")
-    typer.echo(
-        explain_text(name, sheet, survey, depth, given, _overrides(limits or []), log, _width())
-    )
+    more = (_overrides(limits or []), log, _width(), allow_python)
+    typer.echo(explain_text(name, sheet, survey, depth, given, *more))
 
 
 @app.command()
@@ -240,6 +256,7 @@ def check(
         bool,
         typer.Option("--schemas", help="Print where the JSON Schemas for editors lie."),
     ] = False,
+    allow_python: AllowPython = False,
     quiet: Quiet = False,
 ) -> None:
     """Whether rule sheets and survey files are valid: one message for each mistake.
@@ -255,7 +272,7 @@ def check(
         raise PingworthyError("No file to check.", where="check", expected="pingworthy check FILE…")
     wrong = False
     for file in files or []:
-        found = check_file(file)
+        found = check_file(file, allow_python)
         wrong = wrong or bool(found.mistakes)
         if found.mistakes or not quiet:
             typer.echo(str(found), err=bool(found.mistakes))
@@ -308,6 +325,7 @@ def _audit(
     require_assessed: bool,
     pages: str,
     quiet: bool,
+    allow_python: bool = False,
 ) -> None:
     from qa.job import audit as run
     from qa.model.survey_file import load_survey_file
@@ -334,6 +352,7 @@ def _audit(
             require_assessed=require_assessed,
             pages=pages,  # type: ignore[arg-type]  # checked above
             progress=progress,
+            allow_python=allow_python,
         )
     if not quiet:
         typer.echo(summary(findings))

@@ -23,6 +23,7 @@ from typing import Any, Literal, NoReturn
 import qa
 from qa.engine.evaluate import evaluate_line
 from qa.engine.sheets import RuleSheet, load_sheet
+from qa.engine.user_quantities import UserPython, allowed_python, check_inputs, use_python
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.ingest.casts import read_cast
 from qa.model.cast import Cast
@@ -60,9 +61,11 @@ class SheetChoice:
     name: str
     base: str
     overrides: tuple[tuple[str, Any], ...]
+    python: UserPython | None = None
 
     def load(self, survey: SurveyFile) -> RuleSheet:
-        """The sheet with the survey's limits."""
+        """The sheet with the survey's limits; the user's own quantities are in use from here on."""
+        use_python(self.python)
         return _loaded_sheet(
             self, json.dumps(survey.limits, sort_keys=True, default=str), str(survey.path or "")
         )(survey)
@@ -119,6 +122,7 @@ def audit(
     pages: Pages = "auto",
     progress: Progress | None = None,
     executor: ExecutorFactory | None = None,
+    allow_python: bool = False,
 ) -> Findings:
     """Audit the logs of a survey.
 
@@ -146,6 +150,8 @@ def audit(
         Called with lines done, lines in all and the name of the line just done.
     executor : callable, optional
         Makes any ``concurrent.futures`` executor to run lines on.
+    allow_python : bool
+        Whether the Python file that the survey file names, if any, may be run.
 
     Returns
     -------
@@ -164,8 +170,9 @@ def audit(
         if survey
         else SurveyFile()
     )
-    choice = _sheet_choice(sheet, facts, limits or {})
+    choice = _sheet_choice(sheet, facts, limits or {}, allow_python)
     rules = choice.load(facts)
+    check_inputs(rules)
     cast_of(facts)
     _check_parts(choice, facts)
     target = None if out is None else checked_target(Path(out))
@@ -189,13 +196,14 @@ def audit(
 
 
 def _sheet_choice(
-    sheet: str | Path | None, survey: SurveyFile, limits: Mapping[str, Any]
+    sheet: str | Path | None, survey: SurveyFile, limits: Mapping[str, Any], allow_python: bool
 ) -> SheetChoice:
     if sheet:
         name, base = str(sheet), Path.cwd()
     else:
         name, base = survey.sheet or "physics", survey.folder
-    return SheetChoice(name, str(base), tuple(limits.items()))
+    python = allowed_python(survey, allow_python)
+    return SheetChoice(name, str(base), tuple(limits.items()), python)
 
 
 def _check_parts(choice: SheetChoice, survey: SurveyFile) -> None:
@@ -406,6 +414,9 @@ def _together(
             "vessel_time_zone": survey.vessel_time_zone,
             "day": None if day is None else str(day.date),
             "stated": dict(sorted(survey.stated.items())),
+            "python": None
+            if choice.python is None
+            else {"file": choice.python.path.name, "sha256": choice.python.sha256},
             "parts": [
                 {"logs": list(patterns), "states": _flat(tables)}
                 for patterns, tables in survey.parts

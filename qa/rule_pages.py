@@ -9,6 +9,7 @@ from qa.engine.explain import explain
 from qa.engine.one_ping import OnePing, given_value
 from qa.engine.rule_list import list_rules
 from qa.engine.sheets import RuleSheet, load_sheet
+from qa.engine.user_quantities import allowed_python, use_python
 from qa.model.survey_file import SurveyFile, load_survey_file
 
 
@@ -18,6 +19,7 @@ def rules_text(
     limits: Mapping[str, str] | None = None,
     log: Path | None = None,
     width: int = 80,
+    allow_python: bool = False,
 ) -> str:
     """Every rule of a sheet, as text.
 
@@ -32,8 +34,10 @@ def rules_text(
         The log whose [[part]] of the survey file counts.
     width : int
         Columns of the terminal.
+    allow_python : bool
+        Whether the Python file that the survey file names, if any, may be run.
     """
-    facts = _facts(survey, log)
+    facts = _facts(survey, log, allow_python)
     loaded = _sheet(sheet, facts, limits or {})
     whole = facts if log is None else None
     return list_rules(loaded, OnePing(loaded, {}, facts), whole, width)
@@ -48,6 +52,7 @@ def explain_text(
     limits: Mapping[str, str] | None = None,
     log: Path | None = None,
     width: int = 80,
+    allow_python: bool = False,
 ) -> str:
     """One rule, limit or quantity in full, as text.
 
@@ -58,7 +63,7 @@ def explain_text(
     given : mapping of str to str, optional
         Other values to work with, of quantities or limits, as text with units.
     """
-    facts = _facts(survey, log)
+    facts = _facts(survey, log, allow_python)
     overrides = dict(limits or {})
     loaded = _sheet(sheet, facts, overrides)
     overrides |= {n: v for n, v in (given or {}).items() if n in loaded.limits}
@@ -78,8 +83,9 @@ def explain_text(
     return explain(name, loaded, OnePing(loaded, values, facts, cast), width)
 
 
-def _facts(survey: Path | None, log: Path | None) -> SurveyFile:
+def _facts(survey: Path | None, log: Path | None, allow_python: bool) -> SurveyFile:
     facts = load_survey_file(survey) if survey is not None else SurveyFile()
+    use_python(allowed_python(facts, allow_python))
     return facts.for_log(log) if log is not None else facts
 
 

@@ -101,6 +101,7 @@ _TABLE_ABOUT = {
 _SURVEY_ABOUT = {
     "name": "Name of the survey, for the report.",
     "sheet": "Rule sheet: a shipped one's name, or a path.",
+    "python": "Python file that adds quantities; it is run only where --allow-python is given.",
     "depth_from": "What logged depths are measured from.",
     "time_zone": "Zone of log times that carry none, such as UTC or Europe/Lisbon.",
 }
@@ -217,6 +218,7 @@ def survey_schema() -> Schema:
     head: dict[str, Schema] = {
         "name": _TEXT,
         "sheet": _known(shipped_sheets()),
+        "python": _TEXT,
         **zone_and_depth,
     }
     part = _object(PART_KEYS, {"logs": _TEXTS, **zone_and_depth}, _PART_ABOUT)

@@ -13,6 +13,7 @@ from typing import Any, cast
 from qa.engine.evaluate import line_kind
 from qa.engine.plans import Available, Plan, make_plan
 from qa.engine.sheets import RuleSheet, load_sheet
+from qa.engine.user_quantities import allowed_python, use_python
 from qa.ingest.describe import ColumnDescription, Description, Layout, describe_logs
 from qa.ingest.times import iso
 from qa.model.columns import COLUMNS
@@ -163,6 +164,7 @@ def describe(
     logs: Sequence[str | Path],
     survey: str | Path | SurveyFile | None = None,
     sheet: str | Path | None = None,
+    allow_python: bool = False,
 ) -> Start:
     """Describe logs, and by the sheet's rules what is missing in them.
 
@@ -174,6 +176,8 @@ def describe(
         What is true of the survey.
     sheet : str or path, optional
         Rule sheet; beats the survey file's. Default "physics".
+    allow_python : bool
+        Whether the Python file that the survey file names, if any, may be run.
 
     Raises
     ------
@@ -187,6 +191,7 @@ def describe(
         if survey
         else SurveyFile()
     )
+    use_python(allowed_python(facts, allow_python))
     name = str(sheet) if sheet else facts.sheet or "physics"
     base = Path.cwd() if sheet else facts.folder
     description = describe_logs(logs, facts)

@@ -81,7 +81,7 @@ STATED: dict[str, dict[str, Unit | tuple[str, ...] | type[int]]] = {
 SURVEY_TABLES = ("survey", *STATED, "limits", "columns", "lines", "part")
 """The tables of a survey file."""
 
-SURVEY_KEYS = ("name", "sheet", "depth_from", "time_zone")
+SURVEY_KEYS = ("name", "sheet", "python", "depth_from", "time_zone")
 MORE_KEYS: dict[str, tuple[str, ...]] = {"water": ("profile",), "vessel": ("time_zone",)}
 """What tables hold beside what they state."""
 
@@ -123,6 +123,7 @@ class SurveyFile:
     sha256: str = ""
     name: str = ""
     sheet: str = ""
+    python: Path | None = None
     depth_from: DepthFrom = "waterline"
     time_zone: str = "UTC"
     vessel_time_zone: str = "UTC"
@@ -182,6 +183,9 @@ def survey_from(path: Path, raw: Mapping[str, Any], sha256: str = "") -> SurveyF
         survey,
         name=_text(head, "name", path, "survey."),
         sheet=_text(head, "sheet", path, "survey."),
+        python=survey.folder / python
+        if (python := _text(head, "python", path, "survey."))
+        else None,
         given=frozenset(f"survey.{key}" for key in head),
     )
     survey = _overlaid(
