@@ -119,6 +119,9 @@ class TableSource:
             (i for i in columns if not self._file.schema.column(i).max_repetition_level), None
         )
         for group, rows in enumerate(self.groups if flat is not None else ()):
+            # Damaged statistics are refused by the reader; asked for here first they would end the process.
+            name = self._file.schema.column(flat).path
+            next(self._file.iter_batches(batch_size=1, row_groups=[group], columns=[name]), None)
             values = self._file.metadata.row_group(group).column(flat).num_values
             if values != rows:
                 raise _damaged(

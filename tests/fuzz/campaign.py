@@ -259,6 +259,7 @@ class Campaign:
     keep: Path
     first: int = 0
     kinds: Counter[str] = field(default_factory=Counter)
+    again: set[int] = field(default_factory=set)
     failures: list[Outcome] = field(default_factory=list)
     most_bytes: tuple[int, int] = (0, -1)
     most_seconds: tuple[float, int] = (0.0, -1)
@@ -289,12 +290,16 @@ class Campaign:
                         over = "the process died"
                 else:
                     over = self._over(worker)
-                if over is not None:
-                    self._fail(Outcome(worker.number, over))
+                number = worker.number
+                # A machine that stands still looks like a hang; a true one comes again in a fresh process.
+                once_more = over == "a hang" and number not in self.again
+                if over is not None and not once_more:
+                    self._fail(Outcome(number, over))
                 if over is not None or worker.tired:
                     self._ended(worker)
                     team[at] = worker = self._started(worker.folder)
-                    self._next(worker, numbers)
+                    self.again |= {number} if once_more else set()
+                    self._next(worker, iter([number]) if once_more else numbers)
                 elif worker.orders in ready:
                     self._next(worker, numbers)
             if time.monotonic() - told > 30:

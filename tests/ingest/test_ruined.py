@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import subprocess
+import sys
 import warnings
 from pathlib import Path
 
@@ -165,6 +167,16 @@ def test_dictionaries_whose_indices_lead_elsewhere(tmp_path: Path) -> None:
     wrong = {old: np.array([0, 66] * 6, np.int32).tobytes()}
     with pytest.raises(InputError, match="damaged"):
         accounts(arrow(tmp_path, table, wrong))
+
+
+def test_statistics_that_would_end_the_process() -> None:
+    """The file comes of the campaign: its size statistics disagree with its schema, which the library aborts on."""
+    path = Path(__file__).resolve().parent.parent / "data" / "ruined" / "size_statistics.parquet"
+    code = f"import qa; qa.read_log({str(path)!r})"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
+    assert done.returncode == 1
+    assert "InputError" in done.stderr
+    assert "damaged" in done.stderr
 
 
 def test_rejected_times_beyond_the_calendar_keep_their_words(tmp_path: Path) -> None:
