@@ -22,6 +22,10 @@ _TIMELIKE = re.compile(
 )
 
 
+_RULE = re.compile(r"^[\s|+]*(?:[-=_]{3,}[\s|+]*)+$")
+"""A line drawn under a header."""
+
+
 @dataclass(frozen=True, slots=True)
 class Dialect:
     """What must be known to cut a text log into cells.
@@ -95,9 +99,9 @@ def find_encoding(head: bytes, where: str) -> tuple[str, int]:
 
 
 def split_line(line: str, separator: str) -> list[str]:
-    """The cells of a line."""
+    """The cells of a line. Between spaces, a unit in brackets belongs to the name before it."""
     if separator == " ":
-        return line.split()
+        return re.sub(r"(?<=\w)\s+(?=[(\[])", "_", line).split()
     if '"' in line:
         try:
             return next(csv.reader([line], delimiter=separator), [])
@@ -142,7 +146,9 @@ def find_dialect(
     data = [
         (n, line)
         for n, line in enumerate(lines[:4000])
-        if line.strip() and not (comment and line.lstrip().startswith(comment))
+        if line.strip()
+        and not (comment and line.lstrip().startswith(comment))
+        and not _RULE.match(line)
     ]
     if not data:
         raise InputError("The file holds no rows.", where=where, expected="a header and rows")

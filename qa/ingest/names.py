@@ -124,6 +124,9 @@ _WORDS: dict[str, str] = {
     "twoway beamtraveltime tt2way traveltwoway",
     "accepted": "accepted accept valid good isvalid isgood beamaccepted validflag soundingaccepted qcaccept "
     "acceptedflag isaccepted accepted01 beamvalid soundingvalid okflag used",
+    "north_or_south": "ns northsouth northorsouth lathemisphere latitudehemisphere latns hemispherens latdir latitudedir",
+    "east_or_west": "ew eastwest eastorwest lonhemisphere longhemisphere longitudehemisphere lonew hemisphereew londir "
+    "longitudedir",
     "rejected": "rejected reject isrejected beamrejected rejectedflag soundingrejected deleted isdeleted invalid "
     "isinvalid bad isbad",
 }
@@ -685,6 +688,10 @@ def wide_groups(headers: Sequence[Header]) -> dict[str, list[tuple[int, int]]]:
         if not stem:
             continue
         matched = _match(stem.strip(" _.-#"))
+        if matched is None:
+            # "Depth_B017_m": the letter or word only says that the number is a beam's
+            stem = re.sub(r"(?i)[\s_.\-#]+(?:b|bm|beam)(?=[\s_.\-#]*(?:$|[\s(\[_]))", " ", stem)
+            matched = _match(stem.strip(" _.-#"))
         if matched is None or matched[0] not in WIDE_ROLES:
             continue
         groups.setdefault(stem.strip(" _.-#"), []).append((index, number))

@@ -36,6 +36,8 @@ from qa.model.survey_file import SurveyFile
 RANGES = ("depth", "slant_range", "two_way_time", "altitude", "range_scale")
 """A log holds at least one of these, or nothing can be said of its pings."""
 
+SIDES = {"north_or_south": ("latitude", "S"), "east_or_west": ("longitude", "W")}
+"""Columns that say on which side of the equator or meridian a position is: the position's column, the negative side."""
 _SAMPLE = 1 << 18
 
 
@@ -61,6 +63,7 @@ class FileProbe:
     left_over: tuple[tuple[str, str], ...] = ()
     ignored: tuple[str, ...] = ()
     constants: tuple[tuple[str, str], ...] = ()
+    sides: tuple[Binding, ...] = ()
     line_values: bool = False
 
     def binding(self, role: str) -> Binding | None:
@@ -317,6 +320,7 @@ def _finished(
     return FileProbe(
         str(path), shown, form, layout, grain, others, times, survey.depth_from, decimal_comma, size,
         tuple(dict.fromkeys(notes)), tuple(found.left_over.items()), found.ignored, tuple(sorted(constants.items())),
+        tuple(b for b in bindings if b.role in SIDES and SIDES[b.role][0] in roles),
     )  # fmt: skip
 
 

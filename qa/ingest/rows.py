@@ -8,10 +8,11 @@ from typing import Any
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.compute as pc
 from numpy.typing import NDArray
 
 from qa.ingest.names import Binding
-from qa.ingest.probe import FileProbe
+from qa.ingest.probe import SIDES, FileProbe
 from qa.ingest.table_source import TableSource
 from qa.ingest.text_source import RawBatch, TextSource
 from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
@@ -113,6 +114,7 @@ class RowReader:
         self.account = FileAccount(probe.shown, notes=list(probe.notes))
         self.state = TimeState()
         self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
+        self._sides = tuple(s for s in probe.sides if wanted is None or SIDES[s.role][0] in wanted)
         self._latest = NO_TIME
         self._unwritten: set[int] = set()
         self.starts: list[tuple[int, int]] = []
@@ -131,6 +133,8 @@ class RowReader:
         sources = {b.source: self._kind(b) for b in self.bindings}
         for source in self.probe.times.sources:
             sources[source] = self._time_kind()
+        for side in self._sides:
+            sources[side.source] = pa.string()
         return sources
 
     def _raw(self) -> Iterator[RawBatch]:
@@ -302,6 +306,13 @@ class RowReader:
         for role, value in self.probe.constants:
             if role in NAMES and codes[role] is None:
                 codes[role] = np.full(n, getattr(self.names, role).code(value), dtype=np.int64)
+        for side in self._sides:
+            role, negative = SIDES[side.role]
+            letters = pc.utf8_upper(
+                pc.utf8_trim_whitespace(raw.columns[side.source].cast(pa.string()))
+            )
+            turned = np.asarray(pc.fill_null(pc.starts_with(letters, negative), False))
+            pings[role] = np.where(turned, -np.abs(pings[role]), pings[role])
         self._no_fix(pings)
         return Rows(
             raw.rows, time, codes["ping"], codes["line"], codes["channel"], pings, flat, counts
@@ -422,8 +433,6 @@ def _plain_text(array: pa.Array) -> pa.Array:
 
 
 def _list_lengths(array: pa.Array) -> Integers:
-    import pyarrow.compute as pc
-
     lengths = pc.list_value_length(array).fill_null(0)
     return np.asarray(lengths.to_numpy(zero_copy_only=False)).astype(np.int64)
 

@@ -487,9 +487,15 @@ class TextSource:
         if b'"' in data:
             # bytes may overflow: only whether the count is odd matters
             quotes = np.add.reduceat((buffer == 34).view(np.uint8), starts, dtype=np.uint8)
-            odd = np.flatnonzero(quotes % 2 == 1)
-            if len(odd):
-                reject(odd, "a quote that is not closed in its row")
+            # a mark within a cell, as of seconds of arc, is no quote
+            opening = re.compile(b"(?:^|" + re.escape(self.dialect.separator.encode()) + b') *"')
+            odd = [
+                i
+                for i in np.flatnonzero(quotes % 2 == 1).tolist()
+                if opening.search(data[starts[i] : ends[i]])
+            ]
+            if odd:
+                reject(np.array(odd), "a quote that is not closed in its row")
         return drop
 
     def _read(

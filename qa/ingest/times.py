@@ -331,7 +331,12 @@ def _plan_number(
             f'Column "{time.source}" holds numbers that are no count of s, ms, µs or ns since 1970.',
             where=where,
             found=f"{numbers[0]:.15g}",
-            advice='Write, for example, time = "s since 2024-05-15" under [columns.units] in the survey file.',
+            advice=(
+                'If these are a spreadsheet\'s days, write time = "days since 1899-12-30" under [columns.units] in the '
+                "survey file."
+                if 30_000 < typical < 60_000 and float(np.ptp(numbers)) < 400
+                else 'Write, for example, time = "s since 2024-05-15" under [columns.units] in the survey file.'
+            ),
         )
     names = {"s": "seconds", "ms": "milliseconds", "us": "microseconds", "ns": "nanoseconds"}
     notes.append(

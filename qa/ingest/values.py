@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import re
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -153,10 +154,47 @@ def number_of(array: pa.Array, decimal_comma: bool) -> tuple[NDArray[Any], Mask 
     return np.asarray(floats.to_numpy(zero_copy_only=False)), None
 
 
+_POSITION = re.compile(
+    r"""^\s*(?P<before>[NSEW])?\s*(?P<sign>[+-])?
+    (?P<deg>\d{1,3}(?:[.,]\d+)?)\s*(?:[°ºd:\s]\s*
+    (?:(?P<min>\d{1,2}(?:[.,]\d+)?)\s*(?:['′’m:\s]\s*
+    (?:(?P<sec>\d{1,2}(?:[.,]\d+)?)\s*(?:"|″|”|''|s(?=\s*[NSEW]))?)?)?)?)?
+    \s*(?P<after>[NSEW])?\s*$""",
+    re.VERBOSE | re.IGNORECASE,
+)
+
+
+def degrees_of(text: str) -> float | None:
+    """Degrees of a position in degrees, minutes and seconds, or with its side of the world; None where it is none.
+
+    Examples
+    --------
+    >>> degrees_of("38°42.6'N")
+    38.71
+    >>> degrees_of("9 15 36 W")
+    -9.26
+    >>> degrees_of("38 42 36 S"), degrees_of("38d42m36sN")
+    (-38.71, 38.71)
+    """
+    found = _POSITION.match(text)
+    if found is None or (found["before"] and found["after"]):
+        return None
+    side = (found["before"] or found["after"] or "").upper()
+    if side and found["sign"]:
+        return None
+    parts = [float((found[k] or "0").replace(",", ".")) for k in ("deg", "min", "sec")]
+    if parts[1] >= 60.0 or parts[2] >= 60.0:
+        return None
+    degrees = (parts[0] * 3600.0 + parts[1] * 60.0 + parts[2]) / 3600.0
+    return -degrees if found["sign"] == "-" or side in ("S", "W") else degrees
+
+
 def to_number(binding: Binding, array: pa.Array, depth_from: str, decimal_comma: bool) -> Converted:
     """A numeric column in SI."""
     column = COLUMNS[binding.role]
     raw, bad = number_of(array, decimal_comma)
+    if bad is not None and binding.role in ("latitude", "longitude"):
+        raw, bad = _mapped(array, lambda w: degrees_of(w.replace(",", ".") if decimal_comma else w))
     if not raw.flags.writeable:
         raw = raw.view()
     if binding.convert.trivial:
