@@ -426,6 +426,10 @@ class _Search:
             name != "range_scale" or self.kind != "side-scan"
         )
         best = good[0] if first else good[-1]
+        if fewest:
+            # While something is still missed, its own setting may mend it later: the nearest value leaves it most room.
+            best = min(good, key=lambda i: abs(math.log(values[i] / trial[name])))
+            first = bool(values[best] >= trial[name])
         beside = best - 1 if first else best + 1
         value = float(values[best])
         if 0 <= beside < len(values) and fewest < len(found[beside]):
