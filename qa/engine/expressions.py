@@ -591,6 +591,11 @@ FUNCTIONS: dict[str, _Function] = {
 """The functions of the language; ``min``, ``max`` and ``hypot`` take up to eight values."""
 
 
+def _as_logged(text: Any) -> Any:
+    """A stated pulse form as the number that stands for it in a log; any other text as it is."""
+    return float(PULSE_FORMS.index(text)) if isinstance(text, str) and text in PULSE_FORMS else text
+
+
 def judge_comparison(comparison: Comparison, values: Values) -> Judgement:
     """One comparison, element by element.
 
@@ -598,7 +603,7 @@ def judge_comparison(comparison: Comparison, values: Values) -> Judgement:
     """
     left, right = comparison.left.run(values), comparison.right.run(values)
     if isinstance(left, str) or isinstance(right, str):
-        same = left == right
+        same = _as_logged(left) == _as_logged(right)
         met = same if comparison.operator == "==" else not same
         return Judgement(True, met, np.nan, np.nan, 0.0 if met else -1.0)
     with np.errstate(all="ignore"):

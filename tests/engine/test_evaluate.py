@@ -371,3 +371,23 @@ def test_a_clock_coarser_than_a_margin_says_so(
     assert run(log, multibeam, TARGET).spans("clock") == [("", 0, 58)]
     log.time_resolution = 0.001
     assert run(log, multibeam, TARGET).spans("clock") == []
+
+
+@pytest.mark.parametrize("form", ["CW", "FM"])
+def test_a_condition_on_the_pulse_form_holds_for_a_stated_as_for_a_logged_form(
+    run: Any, swath: Any, multibeam: dict[str, Any], tmp_path: Any, form: str
+) -> None:
+    sheet = tmp_path / "contract.toml"
+    sheet.write_text(
+        "[rule.swept]\nwhen = \"pulse_form == 'FM'\"\nrequire = 'pulse_length >= 1*ms'\n",
+        encoding="utf-8",
+    )
+    stated = {**multibeam, "pulse_form": form, "bandwidth": 30e3}
+    unstated = {k: v for k, v in stated.items() if k != "pulse_form"}
+    logged = swath(pulse_form=float(form == "FM"))
+    missed = [
+        [r.pings_missed for r in run(log, facts, None, sheet).result.finding.rules]
+        for log, facts in ((swath(), stated), (logged, unstated))
+    ]
+    # A rule on FM pulses: every ping of an FM line misses it; a CW line is exempt, ping by ping or as a whole.
+    assert missed == ([[60], [60]] if form == "FM" else [[], [0]])

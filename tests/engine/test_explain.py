@@ -130,6 +130,18 @@ def test_a_rule_is_judged_for_the_values_given() -> None:
     assert "With these values" not in told("range-resolution", sheet, depth=20.0)
 
 
+@pytest.mark.parametrize("form", ["CW", "FM"])
+def test_a_condition_on_the_pulse_form_holds_for_a_stated_form(tmp_path: Path, form: str) -> None:
+    path = tmp_path / "own.toml"
+    path.write_text(
+        "[rule.swept]\nwhen = \"pulse_form == 'FM'\"\nrequire = 'pulse_length >= 1*ms'\n", "utf-8"
+    )
+    sheet = load_sheet(path)
+    judged = OnePing(sheet, {"pulse_form": form, "pulse_length": 1e-4}).judged(sheet.rules["swept"])
+    assert (judged is not None) == (form == "FM")
+    assert judged is None or not judged.met
+
+
 def test_limits_of_the_survey_file_are_told_as_its_own() -> None:
     survey = SurveyFile(limits={"target_size": "2 m"})
     sheet = load_sheet("physics", survey)
