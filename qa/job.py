@@ -446,6 +446,12 @@ def _together(
         rules=rules,
         lines=lines,
         sections=tuple(s for o in outcomes for s in o.sections),
+        notes=()
+        if choice.python is None
+        else (
+            f"Some quantities are computed by the survey's own Python file, {choice.python.path.name} "
+            f"(SHA-256 {choice.python.sha256}); what it computes is for its author to answer.",
+        ),
     )
     return replace(findings, exit_status=_exit_status(findings, outcomes, require_assessed))
 

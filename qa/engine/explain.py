@@ -204,12 +204,16 @@ def _inputs(rule: Rule, sheet: RuleSheet) -> list[str]:
 
 
 def _input(page: Page, key: str, here: OnePing) -> None:
-    text = f"{_unit_or_choices(key)} {about_quantity(key)}"
+    text = f"{_unit_or_choices(key, here.sheet)} {about_quantity(key)}"
     ways = [r for r in RECIPES.get(key, ()) if not r.kinds or here.kind in r.kinds]
     if ways and key not in COLUMNS:
         formula, needs = ways[0].formula, ways[0].needs
         text += f" {formula}." if formula else ""
-        text += f" From {named([f'{n} {_unit_or_choices(n)}' for n in needs])}." if needs else ""
+        text += (
+            f" From {named([f'{n} {_unit_or_choices(n, here.sheet)}' for n in needs])}."
+            if needs
+            else ""
+        )
     value = shown(here, key)
     page.labelled(key, text + (f" Here {value}." if value else ""), label_width=22)
 
@@ -433,7 +437,7 @@ def _quantity(page: Page, name: str, sheet: RuleSheet, here: OnePing) -> None:
     for label, text in _ways(name):
         page.labelled(label, text, label_width=10)
     for number, recipe in enumerate(RECIPES.get(name, ()), start=1):
-        _recipe(page, number, recipe)
+        _recipe(page, number, recipe, sheet)
     for title, *paragraphs in docstrings(name):
         page.heading(title)
         for paragraph in paragraphs:
@@ -465,11 +469,11 @@ def _ways(name: str) -> list[tuple[str, str]]:
     return found
 
 
-def _recipe(page: Page, number: int, recipe: Recipe) -> None:
+def _recipe(page: Page, number: int, recipe: Recipe, sheet: RuleSheet) -> None:
     page.heading(f"Computed, way {number}{_conditions(recipe)}", 1)
-    page.paragraph(recipe.formula or f"= {_plain_way(recipe)}", 2)
+    page.paragraph(recipe.formula, 2)
     for need in recipe.needs:
-        unit = _unit_or_choices(need)
+        unit = _unit_or_choices(need, sheet)
         more = ", if it is there" if need in recipe.optional else ""
         page.labelled(need, f"{unit}{more}", 2, label_width=26)
     if recipe.assumes:
@@ -480,27 +484,19 @@ def _recipe(page: Page, number: int, recipe: Recipe) -> None:
         page.paragraph(f"Source: {recipe.source}", 2)
 
 
-def _plain_way(recipe: Recipe) -> str:
-    if recipe.function is as_logged:
-        return recipe.needs[0]
-    about = recipe.about.rstrip(".")
-    return f"{about[:1].lower()}{about[1:]}" if about else "computed"
-
-
 def _conditions(recipe: Recipe) -> str:
     parts = [" or ".join(recipe.kinds)] if recipe.kinds else []
     parts += [f"{name} = {choice}" for name, choice in recipe.only]
     return f" ({', '.join(parts)})" if parts else ""
 
 
-def _unit_of(need: str) -> Unit:
+def _unit_of(need: str, sheet: RuleSheet) -> Unit:
     reducer, bracket, inner = need.partition("(")
-    if not bracket:
-        return quantities.quantity_unit(need)
-    if reducer in ("share", "count"):
+    if bracket and reducer in ("share", "count"):
         return Unit()
-    name = re.search(r"[a-z_0-9]+(?=\)*(,|\Z))", inner)
-    return quantities.quantity_unit(name[0]) if name else Unit()
+    found = re.search(r"[a-z_0-9]+(?=\)*(,|\Z))", inner) if bracket else re.match(r".*", need)
+    name = found[0] if found else ""
+    return sheet.limits[name].unit if name in sheet.limits else quantities.quantity_unit(name)
 
 
 def docstrings(name: str) -> list[list[str]]:
@@ -510,15 +506,36 @@ def docstrings(name: str) -> list[list[str]]:
     for recipe in RECIPES.get(name, ()):
         if recipe.function is as_logged:
             continue
-        text, cited = _docstring(recipe.function)
-        body += [t for t in text if t not in body and t.rstrip(".") != recipe.about.rstrip(".")]
-        references += [c for c in cited if c not in references]
+        for function in (recipe.function, *physics_behind(recipe.function)):
+            text, cited = _docstring(function)
+            body += [t for t in text if t not in body and t.rstrip(".") != recipe.about.rstrip(".")]
+            references += [c for c in cited if c not in references]
     found = []
     if body:
         found.append(["More on it", *body])
     if references:
         found.append(["References", *references])
     return found
+
+
+def physics_behind(function: Callable[..., Any]) -> list[Callable[..., Any]]:
+    """The functions of :mod:`qa.physics` that a registered function calls by name.
+
+    Examples
+    --------
+    >>> from qa.engine.quantities import RECIPES
+    >>> [f.__name__ for f in physics_behind(RECIPES["range_resolution"][0].function)]
+    ['range_resolution_cw', 'range_resolution_fm']
+    """
+    function = inspect.unwrap(function)
+    code = getattr(function, "__code__", None)
+    if code is None:
+        return []
+    known = getattr(function, "__globals__", {})
+    rooms = [known[n] for n in code.co_names if inspect.ismodule(known.get(n))]
+    rooms = [r for r in rooms if r.__name__.startswith("qa.physics.")]
+    called = [getattr(room, n, None) for n in code.co_names for room in rooms]
+    return [f for f in dict.fromkeys(called) if inspect.isfunction(f)]
 
 
 _UNDERLINE = re.compile(r"^(?P<title>[A-Z][A-Za-z ]+)\n-{3,}$", re.MULTILINE)
@@ -546,7 +563,7 @@ def shown(here: OnePing, name: str) -> str:
     value = here.value(name)
     if value is None or isinstance(value, str):
         return value or ""
-    unit = here.sheet.limits[name].unit if name in here.sheet.limits else _unit_of(name)
+    unit = _unit_of(name, here.sheet)
     try:
         numbers = np.atleast_1d(np.asarray(value, dtype=float))
     except TypeError:
@@ -564,11 +581,11 @@ def _unit(unit: Unit, bare: bool = False) -> str:
     return f"[{text}]"
 
 
-def _unit_or_choices(need: str) -> str:
+def _unit_or_choices(need: str, sheet: RuleSheet) -> str:
     symbol = quantities.symbol(need)
     if symbol is not None and symbol.type == "text":
         return f"[{' or '.join(symbol.choices)}]"
-    return _unit(_unit_of(need))
+    return _unit(_unit_of(need, sheet))
 
 
 def _sentence(text: str) -> str:

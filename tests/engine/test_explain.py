@@ -88,6 +88,20 @@ def test_the_docstring_of_the_physics_function_is_told_with_its_references() -> 
     assert ":func:" not in text
 
 
+def test_what_a_physics_function_says_is_told_where_it_is_called_in_passing() -> None:
+    from qa.physics import uncertainty
+
+    doc = uncertainty.vertical_uncertainty.__doc__ or ""
+    first = joined(doc.split("\n\n")[0])
+    assert first in joined(told("vertical_uncertainty"))
+    assert "References" in told("vertical_uncertainty")
+
+
+def test_units_of_limits_among_the_inputs_are_the_limits_own() -> None:
+    assert re.search(r"target_size +\[m\]", told("guaranteed_hits"))
+    assert "From target_size [m]" in joined(told("pings-on-target"))
+
+
 def test_a_limit_that_depends_on_depth_is_worked_out() -> None:
     # S-44 §3.5.2: three times the depth or 25 m, whichever is greater.
     assert "= 111 m at reduced_depth 37 m" in told("sounding-distance", reduced_depth=37.0)

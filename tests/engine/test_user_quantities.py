@@ -92,6 +92,8 @@ def test_a_quantity_of_the_users_own_serves_a_rule(tmp_path: Path) -> None:
     assert 0 < rule.pings_missed < rule.pings_assessed
     assert found.survey["python"]["file"] == "mine.py"
     assert len(found.survey["python"]["sha256"]) == 64
+    assert any("mine.py" in note for note in found.notes)
+    assert qa.audit(LINES[:1], survey=SAMPLE / "survey.toml").notes == ()
 
 
 def test_spawned_workers_have_it_too(tmp_path: Path) -> None:
