@@ -55,7 +55,10 @@ Day = Annotated[
 Workers = Annotated[
     int | None,
     typer.Option(
-        "--workers", min=1, help="Processes at work at once.", show_default="by the logs' size"
+        "--workers",
+        min=1,
+        help="Threads at work at once, in all.",
+        show_default="as many as the machine runs",
     ),
 ]
 RequireAssessed = Annotated[

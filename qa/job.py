@@ -13,8 +13,6 @@ import shutil
 import tempfile
 import traceback
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from concurrent.futures import Executor, Future, ProcessPoolExecutor, as_completed
-from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from pathlib import Path
@@ -24,6 +22,13 @@ import qa
 from qa.engine.evaluate import evaluate_line
 from qa.engine.sheets import RuleSheet, load_sheet
 from qa.engine.user_quantities import UserPython, allowed_python, check_inputs, use_python
+from qa.executors import (
+    ExecutorFactory,
+    ProcessPool,
+    held_to_threads,
+    run_tasks,
+    share_of_threads,
+)
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.ingest.casts import read_cast
 from qa.model.cast import Cast
@@ -44,7 +49,6 @@ from qa.report import LineArtifacts, write_line, write_outputs
 
 Pages = Literal["auto", "one", "many"]
 Progress = Callable[[int, int, str], None]
-ExecutorFactory = Callable[[], Executor]
 
 OUTPUTS = (
     *("report.html", "findings.json", "sections.csv", "rerun.geojson", "pings.parquet"),
@@ -141,7 +145,8 @@ def audit(
     day : DayChoice, optional
         Only pings of this day.
     workers : int, optional
-        Processes at work at once; chosen by the size of the logs if left out.
+        Threads at work at once, in all: as many processes, if there are as many lines. With 1, or if left out and
+        the logs are small, lines run in this process.
     require_assessed : bool
         Whether a rule that was not assessed counts towards the exit status.
     pages : "auto", "one" or "many"
@@ -307,78 +312,33 @@ def _run(
     executor: ExecutorFactory | None,
 ) -> list[LineOutcome]:
     """Every job's outcome, in the order of the jobs."""
-    if executor is None:
-        count = workers if workers is not None else _workers_for(jobs)
-        count = min(count, len(jobs))
-        if count <= 1:
-            return list(_serially(jobs, progress))
-        executor = _ProcessPool(count)
-    return _on_executor(jobs, executor, progress)
-
-
-def _workers_for(jobs: Sequence[LineJob]) -> int:
-    total = sum(job.task.bytes for job in jobs)
-    return (os.cpu_count() or 1) if total > BIG_ENOUGH_TO_SHARE else 1
-
-
-def _serially(jobs: Sequence[LineJob], progress: Progress | None) -> Iterator[LineOutcome]:
-    for done, job in enumerate(jobs, start=1):
-        outcome = run_line(job)
-        if progress is not None:
-            progress(done, len(jobs), job.task.name)
-        yield outcome
-
-
-@dataclass(frozen=True, slots=True)
-class _ProcessPool:
-    """Makes pools of spawned processes, the same on every system."""
-
-    count: int
-
-    def __call__(self) -> Executor:
-        import multiprocessing
-
-        return ProcessPoolExecutor(self.count, mp_context=multiprocessing.get_context("spawn"))
-
-
-def _on_executor(
-    jobs: Sequence[LineJob], factory: ExecutorFactory, progress: Progress | None
-) -> list[LineOutcome]:
-    """Run on a pool; where it breaks, a new one takes the unfinished lines one by one."""
     outcomes: dict[int, LineOutcome] = {}
-
-    def keep(outcome: LineOutcome, name: str) -> None:
-        outcomes[outcome.number] = outcome
+    for job, outcome in _outcomes(jobs, workers, executor):
+        outcomes[job.number] = outcome
         if progress is not None:
-            progress(len(outcomes), len(jobs), name)
-
-    pending = list(jobs)
-    broken = False
-    pool = factory()
-    try:
-        futures: dict[Future[LineOutcome], LineJob] = {
-            pool.submit(run_line, job): job for job in pending
-        }
-        for future in as_completed(futures):
-            try:
-                keep(future.result(), futures[future].task.name)
-            except BrokenProcessPool:
-                broken = True
-                break
-    finally:
-        pool.shutdown(wait=not broken, cancel_futures=True)
-    for job in [job for job in jobs if job.number not in outcomes]:
-        pool = factory()
-        try:
-            keep(pool.submit(run_line, job).result(), job.task.name)
-        except BrokenProcessPool:
-            keep(
-                _failed(job, "the process that computed this line was ended by the system", None),
-                job.task.name,
-            )
-        finally:
-            pool.shutdown(wait=False, cancel_futures=True)
+            progress(len(outcomes), len(jobs), job.task.name)
     return [outcomes[job.number] for job in jobs]
+
+
+def _outcomes(
+    jobs: Sequence[LineJob], workers: int | None, executor: ExecutorFactory | None
+) -> Iterator[tuple[LineJob, LineOutcome]]:
+    """Each job with its outcome, as they are done."""
+    if executor is None:
+        budget = workers or os.cpu_count() or 1
+        processes, threads = share_of_threads(budget, len(jobs))
+        small = sum(job.task.bytes for job in jobs) <= BIG_ENOUGH_TO_SHARE
+        if processes == 1 or (workers is None and small):
+            with held_to_threads(budget):
+                for job in jobs:
+                    yield job, run_line(job)
+            return
+        executor = ProcessPool(processes, threads)
+    yield from run_tasks(run_line, jobs, executor, _lost)
+
+
+def _lost(job: LineJob, why: str) -> LineOutcome:
+    return _failed(job, why, None)
 
 
 # Lines put together

@@ -278,7 +278,7 @@ class TextSource:
     def batches(
         self,
         kinds: Mapping[str, pa.DataType],
-        threads: int = 2,
+        threads: int | None = None,
         most: int | None = None,
         start: tuple[int, int] = (0, 0),
         last: int | None = None,
@@ -290,8 +290,8 @@ class TextSource:
         kinds : mapping of str to pyarrow.DataType
             Columns wanted, by the file's own names, and the types to read them as. A column that holds anything
             else comes as text instead, in the batches from there on.
-        threads : int
-            Blocks parsed at the same time.
+        threads : int, optional
+            Blocks parsed at the same time; two, if this process may use as many.
         most : int, optional
             Stop after about so many bytes.
         start : tuple of int
@@ -300,6 +300,7 @@ class TextSource:
             Number of the last row that is wanted.
         """
         self.starts = []
+        threads = min(2, pa.cpu_count()) if threads is None else threads
         with closing(_blocks(self.path, self.where, self.form, start, self.starts)) as every:
             blocks: Iterator[_Block] = every
             if last is not None:

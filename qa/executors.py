@@ -1,0 +1,166 @@
+"""Where tasks run: in spawned processes, on a cluster, on any executor of ``concurrent.futures``.
+
+An executor comes from a factory, so that one that breaks can be replaced. Nothing heavy is loaded here: a spawned
+process sets its threads before anything that has threads is imported.
+"""
+
+from __future__ import annotations
+
+import os
+from collections import deque
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import (
+    FIRST_COMPLETED,
+    BrokenExecutor,
+    CancelledError,
+    Executor,
+    Future,
+    ProcessPoolExecutor,
+    wait,
+)
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import TypeVar
+
+Task = TypeVar("Task")
+Result = TypeVar("Result")
+ExecutorFactory = Callable[[], Executor]
+THREAD_VARIABLES = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS")
+IN_FLIGHT = 32
+"""Tasks handed to an executor at a time, where nothing says how many it works on at once."""
+
+
+@dataclass(frozen=True, slots=True)
+class ProcessPool:
+    """Makes pools of ``count`` spawned processes, the same on every system, of ``threads`` threads each."""
+
+    count: int
+    threads: int = 1
+
+    def __call__(self) -> Executor:
+        import multiprocessing
+
+        return ProcessPoolExecutor(
+            self.count,
+            mp_context=multiprocessing.get_context("spawn"),
+            initializer=set_threads,
+            initargs=(self.threads,),
+        )
+
+
+def set_threads(count: int) -> None:
+    """Let this process compute with so many threads at once."""
+    for name in THREAD_VARIABLES:
+        os.environ[name] = str(count)
+    import pyarrow as pa
+
+    pa.set_cpu_count(count)
+    pa.set_io_thread_count(count)
+
+
+@contextmanager
+def held_to_threads(count: int) -> Iterator[None]:
+    """Read logs with so many threads for a while, in this process."""
+    import pyarrow as pa
+
+    before = pa.cpu_count(), pa.io_thread_count()
+    pa.set_cpu_count(count)
+    pa.set_io_thread_count(count)
+    try:
+        yield
+    finally:
+        pa.set_cpu_count(before[0])
+        pa.set_io_thread_count(before[1])
+
+
+def share_of_threads(budget: int, tasks: int) -> tuple[int, int]:
+    """Processes, and threads in each, that a budget of threads makes for some tasks.
+
+    Examples
+    --------
+    >>> share_of_threads(8, 100), share_of_threads(8, 3), share_of_threads(2, 1)
+    ((8, 1), (3, 2), (1, 2))
+    """
+    processes = max(1, min(budget, tasks))
+    return processes, max(1, budget // processes)
+
+
+def run_tasks(
+    work: Callable[[Task], Result],
+    tasks: Sequence[Task],
+    factory: ExecutorFactory,
+    lost: Callable[[Task, str], Result],
+) -> Iterator[tuple[Task, Result]]:
+    """Run tasks on an executor, and hand out each with its result as it is done.
+
+    Where the executor breaks, a new one takes the tasks that were under way one by one, so that the one that breaks
+    it is known; the rest goes on as before.
+
+    Parameters
+    ----------
+    work : callable
+        Takes a task; a module's own function, for it travels.
+    tasks : sequence
+    factory : callable
+        Makes the executor, and others after it.
+    lost : callable
+        Takes a task that could not be run and why, and makes a result of that.
+    """
+    waiting = deque(tasks)
+    while waiting:
+        pool = factory()
+        most = 2 * int(getattr(pool, "_max_workers", 0) or 0) or IN_FLIGHT
+        flying: dict[Future[Result], Task] = {}
+        broken = False
+        try:
+            while (waiting or flying) and not broken:
+                while waiting and len(flying) < most:
+                    task = waiting.popleft()
+                    try:
+                        flying[pool.submit(work, task)] = task
+                    except BrokenExecutor:
+                        waiting.appendleft(task)
+                        broken = True
+                        break
+                if broken:
+                    break
+                for future in wait(flying, return_when=FIRST_COMPLETED).done:
+                    try:
+                        result = future.result()
+                    except (BrokenExecutor, CancelledError):
+                        broken = True
+                        continue
+                    except Exception as error:
+                        result = lost(flying[future], f"{type(error).__name__}: {error}")
+                    yield flying.pop(future), result
+        finally:
+            pool.shutdown(wait=not broken, cancel_futures=True)
+        if broken:
+            suspects = list(flying.values())
+            if not suspects and waiting:
+                suspects = [waiting.popleft()]
+            yield from _one_by_one(work, suspects, factory, lost)
+
+
+def _one_by_one(
+    work: Callable[[Task], Result],
+    tasks: Sequence[Task],
+    factory: ExecutorFactory,
+    lost: Callable[[Task, str], Result],
+) -> Iterator[tuple[Task, Result]]:
+    pool: Executor | None = None
+    try:
+        for task in tasks:
+            pool = pool or factory()
+            try:
+                result = pool.submit(work, task).result()
+            except (BrokenExecutor, CancelledError):
+                pool.shutdown(wait=False, cancel_futures=True)
+                pool = None
+                result = lost(task, "the process that computed this line was ended by the system")
+            except Exception as error:
+                result = lost(task, f"{type(error).__name__}: {error}")
+            yield task, result
+    finally:
+        if pool is not None:
+            pool.shutdown(wait=False, cancel_futures=True)
