@@ -932,7 +932,7 @@ def resolution(times: Integers, written: int = 0) -> int:
     --------
     >>> resolution(np.array([0, 0, 0, 1, 1, 1, 2]) * 1_000_000_000)
     1000000000
-    >>> resolution(np.array([0, 200, 400, 600, 1000]) * 1_000_000, written=1_000_000)
+    >>> resolution(np.arange(50) * 200_000_000, written=1_000_000)
     1000000
     """
     gaps = np.abs(np.diff(times[times != NO_TIME][:_MEASURED]))
