@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import random
+import re
 from pathlib import Path
 
 import pytest
@@ -11,6 +13,7 @@ from qa.checking import check_file
 from qa.cli import app
 from qa.engine.sheets import load_sheet, shipped_sheets
 from qa.model.errors import PingworthyError
+from qa.model.shipped import shipped
 
 ROOT = Path(__file__).resolve().parent.parent
 
@@ -238,3 +241,34 @@ def test_check_tells_where_the_schemas_for_editors_lie() -> None:
 
 def test_check_of_no_file_is_refused() -> None:
     assert isinstance(pingworthy("check").exception, PingworthyError)
+
+
+ODD_VALUES = (
+    *('""', "3", "true", "[]", "{}", '"x"', "[1, 2]", '"3 m"', '"1e400 m"', "{ a = 1 }", "-1"),
+    *("1979-05-27", '[["a"]]', "nan", '"("', '"{"', '"{depth:s}"', '"depth"', '"1 / 0"'),
+)
+ODD_LINES = ("foo = 1", "[rule]", "[limits]", "[rule.x]", "[[part]]", "limits = 3", "part = [3]")
+
+
+@pytest.mark.parametrize("seed", range(8))
+def test_whatever_stands_in_a_file_is_valid_or_told(tmp_path: Path, seed: int) -> None:
+    rng = random.Random(seed)
+    sources = [*shipped("rules").glob("*.toml"), ROOT / "sample_logs" / "survey.toml"]
+    texts = [p.read_text(encoding="utf-8") for p in sorted(sources)] + [WRONG_SHEET, WRONG_SURVEY]
+    told = 0
+    for _ in range(12):
+        lines = rng.choice(texts).splitlines()
+        for _ in range(rng.randint(1, 4)):
+            at = rng.randrange(len(lines))
+            stated = re.match(r"(\s*[\w.-]+\s*=\s*)", lines[at])
+            if stated and rng.random() < 0.7:
+                lines[at] = stated[1] + rng.choice(ODD_VALUES)
+            elif rng.random() < 0.5:
+                lines[at] = lines[at].replace("e", "ee", 1)
+            else:
+                lines.insert(at, rng.choice(ODD_LINES))
+        found = check_file(written(tmp_path, "\n".join(lines)))
+        assert ("a valid" in str(found)) == (not found.mistakes)
+        assert all(m.message for m in found.mistakes)
+        told += bool(found.mistakes)
+    assert told

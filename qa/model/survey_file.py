@@ -208,7 +208,7 @@ def survey_from(path: Path, raw: Mapping[str, Any], sha256: str = "") -> SurveyF
         _known(part, (*PART_KEYS, *STATED, "limits", "columns", "lines"), str(path), place)
         logs = part.get("logs", [])
         logs = [logs] if isinstance(logs, str) else logs
-        if not logs or not all(isinstance(log, str) for log in logs):
+        if not isinstance(logs, list) or not logs or not all(isinstance(x, str) for x in logs):
             raise SurveyFileError(
                 "A part says which logs it is for.",
                 where=f"{path}: {place}logs",
