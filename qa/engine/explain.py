@@ -87,7 +87,10 @@ def _rule(page: Page, rule: Rule, sheet: RuleSheet, here: OnePing) -> None:
     if rule.why:
         page.heading("Why it matters")
         page.paragraph(rule.why)
-    if rule.remedy:
+    if rule.not_from_pings:
+        page.heading("What to do")
+        page.paragraph("Show it by other records to whoever accepts the survey.")
+    elif any(template.text for template in rule.remedy.values()):
         page.heading("What to do")
         _by_kind(page, rule.remedy)
     limits = limits_of(rule, sheet)
@@ -214,7 +217,7 @@ def _input(page: Page, key: str, here: OnePing) -> None:
             if needs
             else ""
         )
-    value = shown(here, key)
+    value = shown(here, key) if here.anything_stated else ""
     page.labelled(key, text + (f" Here {value}." if value else ""), label_width=22)
 
 
@@ -417,7 +420,7 @@ def _quantity(page: Page, name: str, sheet: RuleSheet, here: OnePing) -> None:
     else:
         page.paragraph(f"A quantity in {_unit(symbol.unit, bare=True)}.")
     value = shown(here, name)
-    if value:
+    if value and here.anything_stated:
         page.heading("With these values")
         page.paragraph(value)
         for key, node in here.rests_on(name).items():

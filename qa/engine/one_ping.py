@@ -133,6 +133,7 @@ class OnePing:
         available = Available(
             self.kind, frozenset(), frozenset(), stated, True, assumed_kind=self.kind_assumed
         )
+        self.anything_stated = bool(given or survey.stated or cast is not None)
         self.sheet = sheet
         self.given = given
         self.resolver = _OnePingResolver(sheet, available, given)

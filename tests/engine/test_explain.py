@@ -39,6 +39,7 @@ def test_every_rule_says_what_it_checks_why_it_matters_what_to_do_and_its_source
         assert joined(rule.source) in flat, rule.id
         if rule.not_from_pings:
             assert joined(rule.not_from_pings) in flat, rule.id
+            assert "What to do Show it by other records" in flat, rule.id
             continue
         assert joined(rule.text) in flat or all(c in flat for c in rule.columns), rule.id
         assert "What to do" in text, rule.id
@@ -129,6 +130,11 @@ def test_values_of_a_side_scan_are_those_of_its_near_and_farthest_range() -> Non
     assert here.value("least(footprint_along)") == near
     text = explain("footprint_along", sheet, here, 100)
     assert "0.4363 m at the near range, 2.618 m at the farthest" in text
+
+
+def test_with_nothing_stated_no_value_is_told() -> None:
+    assert "With these values" not in told("kind")
+    assert "Here" not in told("range-resolution")
 
 
 def test_what_needs_a_whole_line_is_not_worked_out_from_one_ping() -> None:
