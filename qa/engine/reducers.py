@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -13,41 +13,92 @@ Floats = NDArray[np.float64]
 
 @dataclass(frozen=True, slots=True)
 class Groups:
-    """How a batch's rows fall into pings: ``counts`` rows each, shape (n,), zero allowed."""
+    """How a batch's beams fall into pings: ``counts`` beams each, shape (n,), zero allowed.
+
+    Values of beams have one shape within a batch: (n, width) where every ping has ``width`` beams, two at least,
+    so that what is the same for every ping or along it stays small and broadcasts; else (beams,), width 0.
+    """
 
     counts: NDArray[np.int64]
     starts: NDArray[np.int64]
     filled: NDArray[np.bool_]
     single: bool
+    width: int
 
     @classmethod
     def of(cls, counts: NDArray[np.int64]) -> Groups:
-        """Groups of consecutive rows."""
+        """Groups of consecutive beams."""
         ends = np.cumsum(counts)
         filled = counts > 0
-        return cls(counts, (ends - counts)[filled], filled, bool((counts == 1).all()))
+        alike = len(counts) > 0 and bool((counts == counts[0]).all())
+        width = int(counts[0]) if alike and counts[0] > 1 else 0
+        return cls(counts, (ends - counts)[filled], filled, alike and counts[0] == 1, width)
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Shape of a full array of beam values."""
+        return (len(self.counts), self.width) if self.width else (int(self.counts.sum()),)
+
+    def folded(self, values: NDArray[Any]) -> NDArray[Any]:
+        """Values of beams after one another, in the batch's shape; (1, width) where every ping has the same."""
+        if not self.width:
+            return values
+        grid = values.reshape(self.shape)
+        if len(grid) > 1 and (grid[1] == grid[0]).all() and (grid == grid[0]).all():
+            return grid[:1]
+        return grid
+
+    def full(self, values: Any) -> NDArray[Any]:
+        """Values in the batch's full shape, without a copy."""
+        return np.broadcast_to(values, self.shape)
+
+    @property
+    def unfolded(self) -> Groups:
+        """The same pings, for values of beams after one another."""
+        return replace(self, width=0)
+
+    def flat(self, values: Any) -> Any:
+        """Values of beams after one another; a number as it is."""
+        return self.full(values).ravel() if np.ndim(values) else values
+
+    def at(self, values: Any, beams: NDArray[np.int64]) -> NDArray[Any]:
+        """Values at some beams, counted after one another."""
+        if self.width:
+            return np.asarray(self.full(values)[beams // self.width, beams % self.width])
+        return np.asarray(self.full(values)[beams])
 
     def spread(self, values: Any) -> Any:
-        """A value for each ping, repeated for its beams; one number where all are the same."""
-        if np.ndim(values) == 0:
-            return values
-        if self.single:
+        """A value for each ping, for its beams; one number where all are the same."""
+        if np.ndim(values) == 0 or self.single:
             return values
         if len(values) and (values == values[0]).all():
             return values[0]
-        return np.repeat(values, self.counts)
+        return values[:, None] if self.width else np.repeat(values, self.counts)
 
     def reduced(self, ufunc: Any, values: Any, empty: float) -> Floats:
-        """``ufunc`` over each ping's rows, ``empty`` for a ping without rows."""
+        """``ufunc`` over each ping's beams, ``empty`` for a ping without beams."""
         if self.single:
-            return np.asarray(values, dtype=float)
+            return np.asarray(self.full(values), dtype=float)
+        if self.width:
+            return np.asarray(ufunc.reduce(self.full(values), axis=1), dtype=float)
         found = np.full(len(self.counts), empty)
         if len(self.starts):
-            found[self.filled] = ufunc.reduceat(values, self.starts)
+            found[self.filled] = ufunc.reduceat(self.full(values), self.starts)
         return found
 
+    def counted(self, mask: Any) -> NDArray[np.int64]:
+        """True beams of each ping."""
+        if self.width:
+            return np.asarray(np.count_nonzero(self.full(mask), axis=1), dtype=np.int64)
+        return self.reduced(np.add, self.full(mask).astype(np.int64), 0).astype(np.int64)
+
     def first_where(self, mask: NDArray[np.bool_]) -> NDArray[np.int64]:
-        """Row of the first true element of each ping; -1 where there is none."""
+        """First true beam of each ping, counted after one another; -1 where there is none."""
+        if self.width:
+            mask = self.full(mask)
+            column = mask.argmax(axis=1)
+            pings = np.arange(len(self.counts))
+            return np.where(mask[pings, column], pings * self.width + column, -1)
         found = np.full(len(self.counts), -1, dtype=np.int64)
         rows = np.flatnonzero(mask)
         if not len(rows):
@@ -65,7 +116,6 @@ def reduce_beams(
     reducer: str,
     values: Any,
     groups: Groups,
-    rows: int,
     accepted: NDArray[np.bool_] | None = None,
     nearness: Any = None,
 ) -> Floats:
@@ -75,14 +125,13 @@ def reduce_beams(
     ----------
     reducer : str
         greatest, least, mean, spread (greatest less least), share, count, nearest_vertical or nearest_angle.
-    values : ndarray, shape (rows,), or number
-        NaN where not known; such beams are passed over, and for share and count not counted.
+    values : ndarray or number
+        In the batch's shape, or what broadcasts to it. NaN where not known; such beams are passed over, and for
+        share and count not counted.
     groups : Groups
-    rows : int
-        Rows of the batch.
     accepted : ndarray of bool, optional
         Beams that count; all if left out.
-    nearness : ndarray, shape (rows,), optional
+    nearness : ndarray, optional
         For the nearest: the beam of the least value is taken, of equal ones the first.
 
     Returns
@@ -90,32 +139,49 @@ def reduce_beams(
     ndarray of float64, shape (pings,)
         NaN where no beam counts; 0 for a count.
     """
-    if not rows:
+    if not groups.counts.any():
         return np.full(len(groups.counts), 0.0 if reducer == "count" else np.nan)
-    values = np.broadcast_to(np.asarray(values, dtype=float), (rows,))
+    values = np.asarray(values, dtype=float)
     if accepted is not None:
         values = np.where(accepted, values, np.nan)
     if reducer == "greatest":
-        return groups.reduced(np.fmax, values, np.nan)
+        return _extreme(np.maximum, np.fmax, values, groups)
     if reducer == "least":
-        return groups.reduced(np.fmin, values, np.nan)
+        return _extreme(np.minimum, np.fmin, values, groups)
     if reducer == "spread":
-        return groups.reduced(np.fmax, values, np.nan) - groups.reduced(np.fmin, values, np.nan)
+        greatest = _extreme(np.maximum, np.fmax, values, groups)
+        return greatest - _extreme(np.minimum, np.fmin, values, groups)
     if reducer in ("nearest_vertical", "nearest_angle"):
-        distance = np.broadcast_to(np.asarray(nearness, dtype=float), (rows,))
-        distance = np.where(
-            np.isnan(values), np.inf, np.where(np.isnan(distance), np.inf, distance)
-        )
-        least = groups.reduced(np.minimum, distance, np.inf)
-        row = groups.first_where(
-            (distance == np.repeat(least, groups.counts)) & np.isfinite(distance)
-        )
-        return np.where(row >= 0, values[row], np.nan)
+        row = nearest_beam(values, groups, nearness)
+        return np.where(row >= 0, groups.at(values, row), np.nan)
     known = ~np.isnan(values)
-    number = groups.reduced(np.add, known.astype(float), 0.0)
+    number = groups.counted(known)
     if reducer == "count":
-        return groups.reduced(np.add, np.where(known, values != 0.0, 0.0).astype(float), 0.0)
+        return groups.counted(known & (values != 0.0)).astype(float)
     total = np.where(known, values != 0.0 if reducer == "share" else values, 0.0).astype(float)
     with np.errstate(invalid="ignore", divide="ignore"):
         mean: Floats = groups.reduced(np.add, total, 0.0) / number
     return np.where(number > 0, mean, np.nan)
+
+
+def _extreme(fast: Any, careful: Any, values: Floats, groups: Groups) -> Floats:
+    """Greatest or least, NaN passed over; the pass that minds NaN is taken where there is one."""
+    found = groups.reduced(fast, values, np.nan)
+    return groups.reduced(careful, values, np.nan) if np.isnan(found).any() else found
+
+
+def nearest_beam(values: Floats, groups: Groups, nearness: Any) -> NDArray[np.int64]:
+    """The known beam of the least nearness in each ping, of equal ones the first; -1 where there is none."""
+    distance = np.asarray(nearness, dtype=float)
+    unknown = np.isnan(values) | np.isnan(distance)
+    if unknown.any():
+        distance = np.where(unknown, np.inf, distance)
+    if groups.width:
+        whole = distance if distance.ndim == 2 and distance.shape[1] > 1 else groups.full(distance)
+        pings = np.arange(len(groups.counts))
+        column = np.broadcast_to(whole.argmin(axis=1), pings.shape)
+        there = groups.full(distance)[pings, column] < np.inf
+        return np.where(there, pings * groups.width + column, -1)
+    least = groups.reduced(np.minimum, distance, np.inf)
+    nearest = groups.full(distance) == np.repeat(least, groups.counts)
+    return groups.first_where(nearest & (distance < np.inf))

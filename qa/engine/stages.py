@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from qa.engine.expressions import Judgement, judge
 from qa.engine.plans import Node, Plan, PlannedRule, closure
-from qa.engine.reducers import Groups, reduce_beams
+from qa.engine.reducers import Groups, nearest_beam, reduce_beams
 from qa.model.findings import EXEMPT, MET, MISSED, NOT_ASSESSED, BeamMisses, RuleSeries
 from qa.model.log import BeamBatch, ChannelSpan, Floats, LineLog, PingTable
 
@@ -155,32 +155,31 @@ class LineRun:
         self, pings: NDArray[np.int64], counts: NDArray[np.int64], columns: Mapping[str, Any]
     ) -> None:
         groups = Groups.of(counts)
-        n_rows = int(counts.sum())
-        self.computed.soundings += n_rows
+        self.computed.soundings += int(counts.sum())
         values = _BeamValues(self.computed.values, pings, groups)
         nodes = self.plan.nodes
         accepted: NDArray[np.bool_] | None = None
+        asked = False
         with np.errstate(all="ignore"):
             for key in self.plan.batch:
                 node = nodes[key]
                 if node.way == "reduction":
-                    if accepted is None:
-                        accepted = self._accepted(values, n_rows)
-                    reduced = self._reduced(node, values, groups, n_rows, accepted)
-                    self.computed.values[key][pings] = reduced
+                    if not asked:
+                        accepted, asked = self._accepted(values), True
+                    self.computed.values[key][pings] = self._reduced(node, values, groups, accepted)
                 elif node.grain == "ping":
                     self.computed.values[key][pings] = self._ping_in_batch(node, pings)
                 elif node.way in ("logged", "made"):
-                    values[key] = np.asarray(columns[key], dtype=float)
+                    values[key] = groups.folded(np.asarray(columns[key], dtype=float))
                 elif node.way == "alias":
                     values[key] = values[node.inputs[0]]
                 elif node.limit is not None and node.limit.expression is not None:
                     values[key] = node.limit.expression.run(values)
                 else:
                     values[key] = by_recipe(node, values, groups)
-            accepted = self._accepted(values, n_rows) if accepted is None else accepted
+            accepted = accepted if asked else self._accepted(values)
             for planned in self.beam_rules:
-                self._judge_beams(planned, values, groups, n_rows, pings, accepted)
+                self._judge_beams(planned, values, groups, pings, accepted)
 
     def _ping_in_batch(self, node: Node, pings: NDArray[np.int64]) -> Any:
         """A ping's value that rests on reductions, for the pings of a batch."""
@@ -190,20 +189,21 @@ class LineRun:
             return node.limit.expression.run(here)
         return here[node.inputs[0]] if node.way == "alias" else by_recipe(node, here)
 
-    def _accepted(self, values: Mapping[str, Any], rows: int) -> NDArray[np.bool_] | None:
+    def _accepted(self, values: Mapping[str, Any]) -> NDArray[np.bool_] | None:
+        """Which beams were accepted; None where all were."""
         if "accepted" not in self.plan.nodes or self.plan.available.makes_beams:
             return None
         accepted = values["accepted"]
         if np.ndim(accepted) == 0:
             return None
-        return np.asarray(accepted != 0.0)
+        taken = np.asarray(accepted != 0.0)
+        return None if taken.all() else taken
 
     def _reduced(
         self,
         node: Node,
         values: Mapping[str, Any],
         groups: Groups,
-        rows: int,
         accepted: NDArray[np.bool_] | None,
     ) -> Floats:
         reduction = node.reduction
@@ -212,41 +212,38 @@ class LineRun:
         nearness: Any = None
         if reduction.reducer in ("nearest_vertical", "nearest_angle"):
             if self.plan.available.makes_beams:
-                nearness = np.tile([0.0, 1.0], rows // 2)
+                nearness = np.array([[0.0, 1.0]])
             else:
                 angle = 0.0 if reduction.angle is None else reduction.angle.run(values)
                 nearness = np.abs(np.abs(values["angle_from_vertical"]) - angle)
         counted = None if "accepted" in reduction.inner.names else accepted
-        return reduce_beams(reduction.reducer, inner, groups, rows, counted, nearness)
+        return reduce_beams(reduction.reducer, inner, groups, counted, nearness)
 
     def _judge_beams(
         self,
         planned: PlannedRule,
         values: _BeamValues,
         groups: Groups,
-        rows: int,
         pings: NDArray[np.int64],
         accepted: NDArray[np.bool_] | None,
     ) -> None:
         assert planned.rule.requirement is not None
         judged = judge(planned.rule.requirement, values)
-        known = np.broadcast_to(judged.known, (rows,))
+        known = np.asarray(judged.known)
         if accepted is not None:
             known = known & accepted
-        missed = known & ~np.broadcast_to(judged.met, (rows,))
+        missed = known & ~np.asarray(judged.met)
         kept = self.computed.worst_beams[planned.rule.id]
-        kept.assessed[pings] = groups.reduced(np.add, known.astype(np.int64), 0)
-        kept.missed[pings] = groups.reduced(np.add, missed.astype(np.int64), 0)
-        margin = np.where(known, judged.margin, np.inf)
-        least = groups.reduced(np.minimum, margin, np.inf)
-        worst = groups.first_where(known & (margin == np.repeat(least, groups.counts)))
+        kept.assessed[pings] = groups.counted(known)
+        kept.missed[pings] = groups.counted(missed)
+        worst = nearest_beam(np.where(known, 0.0, np.nan), groups, judged.margin)
         found = worst >= 0
         rows_of, into = worst[found], pings[found]
-        kept.margin[into] = margin[rows_of]
-        kept.value[into] = np.broadcast_to(judged.value, (rows,))[rows_of]
-        kept.limit[into] = np.broadcast_to(judged.limit, (rows,))[rows_of]
+        kept.margin[into] = groups.at(judged.margin, rows_of)
+        kept.value[into] = groups.at(judged.value, rows_of)
+        kept.limit[into] = groups.at(judged.limit, rows_of)
         for key, into_values in kept.inputs.items():
-            into_values[into] = np.broadcast_to(values[key], (rows,))[rows_of]
+            into_values[into] = groups.at(values[key], rows_of)
         self._keep_misses(kept, missed, values, groups, pings)
 
     def _keep_misses(
@@ -257,15 +254,17 @@ class LineRun:
         groups: Groups,
         pings: NDArray[np.int64],
     ) -> None:
-        rows = np.flatnonzero(missed)
+        if not missed.any():
+            return
+        rows = np.flatnonzero(groups.full(missed))
         kept.total += len(rows)
-        if not len(rows) or "angle_from_vertical" not in self.plan.nodes:
+        if "angle_from_vertical" not in self.plan.nodes:
             return
         if self.plan.nodes["angle_from_vertical"].grain != "beam":
             return
         kept.kept += len(rows)
         owner = np.repeat(pings, groups.counts)[rows]
-        kept.misses.append((owner, np.asarray(values["angle_from_vertical"], dtype=float)[rows]))
+        kept.misses.append((owner, groups.at(values["angle_from_vertical"], rows)))
         if kept.kept > 4 * MOST_BEAM_MISSES:
             _thin(kept)
 
@@ -302,9 +301,11 @@ def by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = Non
         return recipe.function(*(values[need] for need in recipe.needs))
     named = zip(recipe.parameters, recipe.needs, strict=True)
     given = {p: values[need] for p, need in named if need not in node.absent}
-    return (
-        recipe.function(**given, groups=groups) if recipe.within_ping else recipe.function(**given)
-    )
+    if recipe.within_ping:
+        assert groups is not None
+        flat = {p: groups.flat(v) for p, v in given.items()}
+        return groups.folded(recipe.function(**flat, groups=groups.unfolded))
+    return recipe.function(**given)
 
 
 def _thin(kept: WorstBeams) -> None:

@@ -270,7 +270,9 @@ class OpenedLine:
         """A beam's row that stands twice in a row counts once; pings are looked at when all are known."""
         if self._grain != "beam" or (rows.counts != 1).any():
             return rows, None
-        now = {"time": rows.time, **rows.pings, **rows.beams}
+        # What differs soonest comes first: the beam's number from row to row.
+        beam = {"beam": rows.beams["beam"]} if "beam" in rows.beams else {}
+        now = {**beam, "time": rows.time, **rows.pings, **rows.beams}
         for key in ("ping", "channel"):
             values = getattr(rows, key)
             if values is not None:

@@ -69,7 +69,8 @@ class Spill:
         if self._writer is not None and self._reader is None:
             self._writer.close()
             assert self._folder is not None
-            self._mapped = pa.memory_map(str(Path(self._folder) / "beams.arrow"), "r")
+            # Read batch by batch: a mapped file would count as this process's memory, whole.
+            self._mapped = pa.OSFile(str(Path(self._folder) / "beams.arrow"), "rb")
             self._reader = pa.ipc.open_file(self._mapped)
 
     def batches(self, names: Sequence[str]) -> Iterator[dict[str, NDArray[Any]]]:
@@ -80,15 +81,6 @@ class Spill:
             batches = (self._reader.get_batch(i) for i in range(self._reader.num_record_batches))
         for batch in batches:
             yield {name: batch.column(name).to_numpy(zero_copy_only=False) for name in names}
-
-    def table(self) -> pa.Table:
-        """All of it, still on disk where it is on disk."""
-        if self._reader is not None:
-            return pa.Table.from_batches(
-                [self._reader.get_batch(i) for i in range(self._reader.num_record_batches)],
-                self._schema,
-            )
-        return pa.Table.from_batches(self._kept, self._schema)
 
     def close(self) -> None:
         """Remove what was put aside."""

@@ -50,7 +50,9 @@ def test_a_reducer_is_the_plain_loop(
     values = np.array([b[0] for b in flat], dtype=float)
     accepted = np.array([b[1] for b in flat], dtype=bool)
     angle = np.array([b[2] for b in flat], dtype=float)
-    found = reduce_beams(reducer, values, Groups.of(counts), len(flat), accepted, np.abs(angle))
+    groups = Groups.of(counts)
+    folded = (groups.folded(v) for v in (values, accepted, np.abs(angle)))
+    found = reduce_beams(reducer, next(folded), groups, *folded)
     expected = np.array([plainly(reducer, p) for p in pings])
     np.testing.assert_allclose(found, expected, rtol=1e-12, atol=1e-12)
 
