@@ -79,11 +79,12 @@ class Groups:
         """``ufunc`` over each ping's beams, ``empty`` for a ping without beams."""
         if self.single:
             return np.asarray(self.full(values), dtype=float)
-        if self.width:
+        if self.width and ufunc is not np.add:
             return np.asarray(ufunc.reduce(self.full(values), axis=1), dtype=float)
+        # A sum's last digit hangs on the order of its terms, which may not hang on how batches are cut.
         found = np.full(len(self.counts), empty)
         if len(self.starts):
-            found[self.filled] = ufunc.reduceat(self.full(values), self.starts)
+            found[self.filled] = ufunc.reduceat(self.full(values).ravel(), self.starts)
         return found
 
     def counted(self, mask: Any) -> NDArray[np.int64]:

@@ -1,0 +1,72 @@
+"""No result depends on how beams are cut into batches, nor on whether all pings have as many."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+import pytest
+
+from qa.engine import stages
+from qa.engine.reducers import Groups
+
+LIMITS = {"target_size": "0.6 m", "hits_required": 3, "beams_required": 1, "least_swath": "30 m"}
+
+
+def _line(swath: Any, jittered: bool) -> Any:
+    rng = np.random.default_rng(3)
+    log = swath(240, interval=0.06, heading=rng.normal(0, 0.1, 240), roll=rng.normal(0, 2.0, 240))
+    shape = log.beams["depth"].shape
+    log.beams["depth"] = log.beams["depth"] + rng.normal(0.0, 0.3, shape)
+    log.beams["depth"][60:90] *= 1.6
+    log.beams["depth"][rng.random(shape) < 0.02] = np.nan
+    log.beams["accepted"] = (rng.random(shape) > 0.05).astype(float)
+    log.beams["accepted"][120:130] = 0.0
+    log.beams["two_way_time"] = 2 * log.beams["depth"] / 1480.0
+    if jittered:
+        log.beams["beam_angle"] = log.beams["beam_angle"] + rng.normal(0, 0.4, (shape[0], 1))
+    return log
+
+
+def _same(one: Any, other: Any) -> None:
+    assert one.finding == other.finding
+    assert one.sections == other.sections
+    assert set(one.columns) == set(other.columns)
+    for key, values in one.columns.items():
+        np.testing.assert_array_equal(values, other.columns[key], err_msg=key)
+    for rule, series in one.rules.items():
+        for name in ("status", "value", "limit", "margin"):
+            ours, theirs = getattr(series, name), getattr(other.rules[rule], name)
+            np.testing.assert_array_equal(ours, theirs, err_msg=f"{rule} {name}")
+
+
+@pytest.mark.parametrize("jittered", [False, True])
+@pytest.mark.parametrize("rows", [101, 1234, 9999])
+def test_any_size_of_batch_gives_the_same(
+    run: Any, swath: Any, multibeam: dict[str, Any], jittered: bool, rows: int
+) -> None:
+    log = _line(swath, jittered)
+    whole = run(log, multibeam, LIMITS).result
+    assert len(whole.sections) > 5
+    _same(run(log, multibeam, LIMITS, rows=rows).result, whole)
+
+
+@pytest.mark.parametrize("jittered", [False, True])
+def test_pings_of_as_many_beams_are_judged_as_any(
+    run: Any,
+    swath: Any,
+    multibeam: dict[str, Any],
+    jittered: bool,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    log = _line(swath, jittered)
+    folded = run(log, multibeam, LIMITS).result
+
+    class Unfolded:
+        @staticmethod
+        def of(counts: Any) -> Groups:
+            return replace(Groups.of(counts), width=0)
+
+    monkeypatch.setattr(stages, "Groups", Unfolded)
+    _same(run(log, multibeam, LIMITS).result, folded)
