@@ -144,6 +144,99 @@ def _intervals(line: Set, value: float) -> None:
     line.time = np.concatenate([[0.0], np.cumsum(step)[:-1]])
 
 
+def _level(line: Set, depth: float = HEIGHT) -> None:
+    line.beams["depth"] = np.full(np.shape(line.beams["depth"]), depth)
+
+
+def _pocket(line: Set, depth: float) -> None:
+    _level(line)
+    line.beams["depth"][HERE] = depth
+
+
+@case("ping-interval", mend=lambda line, n: _intervals(line, 1.0 / n[0]), lacking="pulse_length")
+def _(line: Set, s: float) -> None:
+    _level(line)
+    line.pings["range_scale"] = np.full(N, 30.0)
+    _intervals(line, (2 * 30.0 / C + 60e-6) / s)
+
+
+@case("echo-in-time", mend=lambda line, n: _intervals(line, 1.0 / n[0]))
+def _(line: Set, s: float) -> None:
+    _level(line)
+    _intervals(line, 2 * _slant() / C / s)
+
+
+@case(
+    "ping-gap",
+    "single-beam",
+    mend=lambda line, n: _one_interval(line, n[0]),
+    spans=((FIRST, FIRST),),
+)
+def _(line: Set, s: float) -> None:
+    _one_interval(line, s * 3 * INTERVAL)
+
+
+def _one_interval(line: Set, value: float) -> None:
+    step = np.full(N, INTERVAL)
+    step[FIRST] = value
+    line.time = np.concatenate([[0.0], np.cumsum(step)[:-1]])
+
+
+@case(
+    "range-resolution", mend=lambda line, n: line.set("pulse_length", n[0]), lacking="target_size"
+)
+def _(line: Set, s: float) -> None:
+    line.set("pulse_length", s * 2 * 2.0 / C)
+
+
+@case("across-resolution", mend=lambda line, n: _pocket(line, n[0]), lacking="beamwidth_across")
+def _(line: Set, s: float) -> None:
+    # exact form at the edge of the fan, the beam widened by steering (C-13 eqs. 3.33 and 3.35)
+    edge, half = math.radians(FAN), math.radians(1.0) / math.cos(math.radians(FAN))
+    _pocket(line, s * 2.0 / (math.tan(edge + half) - math.tan(edge - half)))
+
+
+@case(
+    "along-resolution",
+    "side-scan",
+    mend=lambda line, n: line.set("range_scale", n[0]),
+    lacking="range_scale",
+)
+def _(line: Set, s: float) -> None:
+    line.set("range_scale", s * 2.0 / (2 * math.tan(math.radians(1.0))), 50.0)
+
+
+@case(
+    "footprint-growth",
+    "single-beam",
+    mend=lambda line, n: _pocket(line, n[0]),
+    lacking="target_size",
+)
+def _(line: Set, s: float) -> None:
+    line.stated["beamwidth_across"] = 1.0
+    _pocket(line, s * 2.0 / (2 * math.tan(math.radians(1.0))))
+
+
+@case(
+    "pings-on-target",
+    mend=lambda line, n: line.set("speed", n[0]),
+    lacking="hits_required",
+    limits={"hits_required": 10},
+    clean=0.9,
+)
+def _(line: Set, s: float) -> None:
+    # C-13 eq. 4.2: (L + R·φ)/(V·t) = N at s = 1; half a hit more, so that the floor decides nothing
+    _level(line)
+    footprint = 2 * HEIGHT * math.tan(math.radians(1.0))
+    line.set("speed", s * (2.0 + footprint) / 10.5 / INTERVAL, 0.5)
+
+
+@case("ping-spacing", mend=lambda line, n: line.set("speed", n[0]), lacking="beamwidth_along")
+def _(line: Set, s: float) -> None:
+    _level(line)
+    line.set("speed", s * 2 * HEIGHT * math.tan(math.radians(1.0)) / INTERVAL)
+
+
 @case("ping-pace", mend=lambda line, n: _intervals(line, 1.0 / n[0]), lacking="pulse_length")
 def _(line: Set, s: float) -> None:
     line.beams["depth"] = np.full((N, BEAMS), HEIGHT)
@@ -583,7 +676,7 @@ def test_a_missing_input_is_named(case: Case) -> None:
     assert case.lacking in rule.reason
 
 
-_NUMBER = re.compile(r"(\d+(?:\.\d+)?(?:e-?\d+)?) (Hz|kHz|m/s|m|µs|us|kt|deg/s|deg)\b")
+_NUMBER = re.compile(r"(\d+(?:\.\d+)?(?:e-?\d+)?) (Hz|kHz|m/s|ms|m|µs|us|s|kt|deg/s|deg)\b")
 
 
 @pytest.mark.parametrize("case", [c for c in CASES if c.mend], ids=_name)
