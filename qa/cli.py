@@ -297,6 +297,7 @@ def settings(
         ),
     ] = None,
     limits: Limits = None,
+    allow_python: AllowPython = False,
 ) -> None:
     """Which settings of the stated sonar satisfy a sheet, or which of its rules conflict.
 
@@ -304,9 +305,8 @@ def settings(
     """
     from qa.settings import asked_for, text
 
-    answer = asked_for(
-        survey, sheet, depth, _overrides(hold or [], "--hold"), _overrides(limits or [])
-    )
+    held = _overrides(hold or [], "--hold")
+    answer = asked_for(survey, sheet, depth, held, _overrides(limits or []), allow_python)
     typer.echo(text(answer))
     raise typer.Exit(0 if answer.satisfied else 1)
 

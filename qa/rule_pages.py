@@ -10,6 +10,7 @@ from qa.engine.one_ping import OnePing, given_value
 from qa.engine.rule_list import list_rules
 from qa.engine.sheets import RuleSheet, load_sheet
 from qa.engine.user_quantities import allowed_python, use_python
+from qa.job import cast_of
 from qa.model.survey_file import SurveyFile, load_survey_file
 
 
@@ -75,12 +76,7 @@ def explain_text(
     for quantity, text in (given or {}).items():
         if quantity not in loaded.limits:
             values[quantity] = given_value(quantity, text)
-    cast = None
-    if facts.profile is not None:
-        from qa.ingest.casts import read_cast
-
-        cast = read_cast(facts.profile, facts)
-    return explain(name, loaded, OnePing(loaded, values, facts, cast), width)
+    return explain(name, loaded, OnePing(loaded, values, facts, cast_of(facts)), width)
 
 
 def _facts(survey: Path | None, log: Path | None, allow_python: bool) -> SurveyFile:

@@ -19,6 +19,7 @@ from qa.engine.assumed import assumed_values
 from qa.engine.evaluate import evaluate_line
 from qa.engine.remedies import rounded
 from qa.engine.sheets import RuleSheet, load_sheet
+from qa.engine.user_quantities import allowed_python, use_python
 from qa.job import cast_of
 from qa.model.cast import Cast
 from qa.model.errors import PingworthyError, nearest
@@ -568,6 +569,7 @@ def asked_for(
     depth: str | None,
     held: Mapping[str, str],
     limits: Mapping[str, str],
+    allow_python: bool = False,
 ) -> Answer:
     """The answer to what a person asks: files by path, values as texts with units.
 
@@ -581,6 +583,8 @@ def asked_for(
         One depth or two with ".." between, as in "10m..40m".
     held, limits : mapping of str to str
         Settings that stay, and limits that override.
+    allow_python : bool
+        Whether the Python file that the survey file names, if any, may be run.
 
     Raises
     ------
@@ -588,6 +592,7 @@ def asked_for(
         If a file, a name or a value cannot be used.
     """
     facts = load_survey_file(survey) if survey else SurveyFile()
+    use_python(allowed_python(facts, allow_python))
     base = None if sheet else facts.folder
     loaded = load_sheet(sheet or facts.sheet or "physics", facts, limits, base)
     depths = None

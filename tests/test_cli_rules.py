@@ -69,6 +69,17 @@ def test_explain_takes_the_part_of_the_survey_file_that_a_log_is_of() -> None:
     assert "0.0447 m" in done.stdout  # 1490 m/s × 60 µs / 2
 
 
+def test_explain_reckons_with_the_surveys_cast(tmp_path: Path) -> None:
+    written(tmp_path, "depth (m),sound speed (m/s)\n0,1500\n10,1500\n40,1500\n", "cast.csv")
+    survey = written(
+        tmp_path, '[sonar]\nkind = "multibeam"\n[water]\nprofile = "cast.csv"\n', "survey.toml"
+    )
+    assert pingworthy("check", survey).exit_code == 0
+    done = pingworthy("explain", "mean_sound_speed", "--survey", survey, "--depth", "30m")
+    assert "With these values\n  1500 m/s\n" in done.stdout
+    assert "sound_speed                 1500 m/s, assumed" not in done.stdout
+
+
 def test_explain_refuses_an_unknown_name_with_the_nearest() -> None:
     done = pingworthy("explain", "range-resolushun")
     assert isinstance(done.exception, PingworthyError)

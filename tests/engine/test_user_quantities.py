@@ -68,12 +68,13 @@ def test_a_file_is_refused_unless_it_is_allowed(tmp_path: Path) -> None:
     path = survey(tmp_path, f"open({str(mark)!r}, 'w').close()\n")
     with pytest.raises(SurveyFileError, match="--allow-python"):
         qa.audit(LINES, survey=path)
-    for command in ("rules", "explain", "columns", "check", "audit"):
+    for command in ("rules", "explain", "columns", "check", "settings", "audit"):
         arguments = {
             "rules": ["--survey", path],
             "explain": ["height", "--survey", path],
             "columns": [LINES[0], "--survey", path],
             "check": [path],
+            "settings": ["--survey", path, "--depth", "10m"],
             "audit": [LINES[0], "--survey", path, "--out", tmp_path / "out"],
         }[command]
         done = CliRunner().invoke(app, [command, *map(str, arguments)])
