@@ -14,6 +14,7 @@ from qa.model.errors import PingworthyError
 
 if TYPE_CHECKING:
     from qa.ingest import DayChoice
+    from qa.kept import Kept
     from qa.model.findings import Findings
 
 app = typer.Typer(
@@ -61,6 +62,24 @@ Workers = Annotated[
         show_default="as many as the machine runs",
     ),
 ]
+KeepIn = Annotated[
+    Path | None,
+    typer.Option(
+        "--keep-in",
+        help="Folder in which computed lines are kept. [default: PINGWORTHY_KEPT, or the user's folder for caches]",
+        show_default=False,
+    ),
+]
+NoKeep = Annotated[
+    bool, typer.Option("--no-keep", help="Compute every line, and keep none for another time.")
+]
+Rehash = Annotated[
+    bool,
+    typer.Option(
+        "--rehash",
+        help="Tell unchanged logs by their content, not by their size and time of change.",
+    ),
+]
 RequireAssessed = Annotated[
     bool,
     typer.Option(
@@ -106,6 +125,9 @@ def audit(
     limits: Limits = None,
     day: Day = None,
     workers: Workers = None,
+    keep_in: KeepIn = None,
+    no_keep: NoKeep = False,
+    rehash: Rehash = False,
     require_assessed: RequireAssessed = False,
     pages: PagesChoice = "auto",
     allow_python: AllowPython = False,
@@ -118,6 +140,7 @@ def audit(
     _audit(
         list(logs),
         *(survey, sheet, out, limits, day, workers, require_assessed, pages, quiet, allow_python),
+        kept=_kept(keep_in, no_keep, rehash),
     )
 
 
@@ -138,6 +161,23 @@ def demo(
         # The sample has faults on purpose, and finding them is what the demo shows.
         if ended.exit_code != 1:
             raise
+
+
+@app.command()
+def kept(
+    keep_in: KeepIn = None,
+    clear: Annotated[bool, typer.Option("--clear", help="Remove everything that is kept.")] = False,
+) -> None:
+    """Where computed lines are kept so that unchanged ones need not be computed again, how many, and their size."""
+    from qa.kept import Kept, checked_folder, kept_folder
+
+    held = Kept(checked_folder(kept_folder(keep_in)))
+    records, size = held.size()
+    typer.echo(f"Folder: {held.folder}")
+    typer.echo(f"Lines kept: {records}")
+    typer.echo(f"Size: {size / 1e6:.1f} MB, at most {held.budget / 1e6:.0f} MB after an audit")
+    if clear:
+        typer.echo(f"Removed: {held.clear() / 1e6:.1f} MB")
 
 
 @app.command()
@@ -329,6 +369,7 @@ def _audit(
     pages: str,
     quiet: bool,
     allow_python: bool = False,
+    kept: Kept | None = None,
 ) -> None:
     from qa.job import audit as run
     from qa.model.survey_file import load_survey_file
@@ -356,7 +397,16 @@ def _audit(
             pages=pages,  # type: ignore[arg-type]  # checked above
             progress=progress,
             allow_python=allow_python,
+            kept=kept,
         )
+    if kept is not None and not quiet:
+        if kept.taken:
+            typer.echo(
+                f"{kept.taken} of {len(findings.lines)} lines unchanged, taken from {kept.folder}",
+                err=True,
+            )
+        if kept.trouble:
+            typer.echo(f"Lines are not kept for another time: {kept.trouble}", err=True)
     if not quiet:
         typer.echo(summary(findings))
         typer.echo(f"Report: {out / 'report.html'}")
@@ -367,6 +417,20 @@ def _audit(
         if line.error and findings.exit_status == 3:
             typer.echo(f"Line {line.line} failed: {line.error}", err=True)
     raise typer.Exit(findings.exit_status)
+
+
+def _kept(keep_in: Path | None, no_keep: bool, rehash: bool) -> Kept | None:
+    from qa.kept import Kept, checked_folder, kept_folder
+
+    if no_keep:
+        if keep_in is not None or rehash:
+            raise PingworthyError(
+                "Nothing is kept with --no-keep.",
+                where="--keep-in" if keep_in is not None else "--rehash",
+                advice="Leave one of the two out.",
+            )
+        return None
+    return Kept(checked_folder(kept_folder(keep_in)), rehash=rehash)
 
 
 def _overrides(texts: list[str], where: str = "--set") -> dict[str, str]:

@@ -10,9 +10,9 @@ import hashlib
 import json
 import os
 import shutil
-import tempfile
 import traceback
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from pathlib import Path
@@ -31,6 +31,8 @@ from qa.executors import (
 )
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.ingest.casts import read_cast
+from qa.kept import Content, Kept
+from qa.kept_lines import contents, identity, keep, line_key, recall
 from qa.model.cast import Cast
 from qa.model.errors import InputError, OutputError, PingworthyError
 from qa.model.findings import (
@@ -46,6 +48,7 @@ from qa.model.findings import (
 from qa.model.log import FileAccount, RejectedRow
 from qa.model.survey_file import SurveyFile, load_survey_file
 from qa.report import LineArtifacts, write_line, write_outputs
+from qa.unfinished import folder_beside
 
 Pages = Literal["auto", "one", "many"]
 Progress = Callable[[int, int, str], None]
@@ -54,6 +57,8 @@ OUTPUTS = (
     *("report.html", "findings.json", "sections.csv", "rerun.geojson", "pings.parquet"),
     *("rejected.csv", "lines", "data"),
 )
+KNOWN_BY = "findings.json"
+"""What a folder that an audit wrote is known by."""
 BIG_ENOUGH_TO_SHARE = 30_000_000
 """Bytes of logs from which on starting other processes pays."""
 
@@ -96,6 +101,7 @@ class LineJob:
     survey: SurveyFile
     sheet: SheetChoice
     folder: str | None
+    identity: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -127,6 +133,7 @@ def audit(
     progress: Progress | None = None,
     executor: ExecutorFactory | None = None,
     allow_python: bool = False,
+    kept: Kept | None = None,
 ) -> Findings:
     """Audit the logs of a survey.
 
@@ -157,6 +164,8 @@ def audit(
         Makes any ``concurrent.futures`` executor to run lines on.
     allow_python : bool
         Whether the Python file that the survey file names, if any, may be run.
+    kept : Kept, optional
+        Where lines computed are kept, and taken from where nothing that counts for them has changed.
 
     Returns
     -------
@@ -182,21 +191,22 @@ def audit(
     _check_parts(choice, facts)
     target = None if out is None else checked_target(Path(out))
     plan = plan_logs(paths, facts, day)
-    folder = None if target is None else _folder_beside(target)
-    try:
+    with _folder_beside(target) as folder:
         jobs = [
             LineJob(number, task, facts, choice, None if folder is None else str(folder))
             for number, task in enumerate(plan.lines, start=1)
         ]
-        outcomes = _run(jobs, workers, progress, executor)
-        findings = _together(facts, choice, rules, plan.inputs, outcomes, day, require_assessed)
+        budget = workers or os.cpu_count() or 1
+        files = [Path(part.probe.path) for task in plan.lines for part in task.parts]
+        known = {} if kept is None else contents(kept, files, budget)
+        outcomes = _run(jobs, workers, progress, executor, kept, known)
+        findings = _together(
+            facts, choice, rules, plan.inputs, outcomes, day, require_assessed, known
+        )
         if folder is not None and target is not None:
             artifacts = [o.artifacts for o in outcomes if o.artifacts is not None]
             write_outputs(findings, artifacts, _rejected(outcomes), folder, pages)
             _move_into_place(folder, target)
-    finally:
-        if folder is not None:
-            shutil.rmtree(folder, ignore_errors=True)
     return findings
 
 
@@ -256,7 +266,11 @@ def run_line(job: LineJob) -> LineOutcome:
     accounts = log.accounts()
     notes = tuple(dict.fromkeys(n for a in accounts for n in a.notes))
     result.finding = replace(result.finding, notes=notes)
-    artifacts = write_line(result, Path(job.folder), job.number) if job.folder is not None else None
+    artifacts = (
+        None
+        if job.folder is None
+        else write_line(result, Path(job.folder), job.number, job.identity)
+    )
     return LineOutcome(
         job.number,
         result.finding,
@@ -310,13 +324,35 @@ def _run(
     workers: int | None,
     progress: Progress | None,
     executor: ExecutorFactory | None,
+    kept: Kept | None,
+    known: Mapping[Path, Content],
 ) -> list[LineOutcome]:
-    """Every job's outcome, in the order of the jobs."""
+    """Every job's outcome, in the order of the jobs: kept ones first, then those that are computed."""
     outcomes: dict[int, LineOutcome] = {}
-    for job, outcome in _outcomes(jobs, workers, executor):
+
+    def done(job: LineJob, outcome: LineOutcome) -> None:
         outcomes[job.number] = outcome
         if progress is not None:
             progress(len(outcomes), len(jobs), job.task.name)
+
+    keys: dict[int, str] = {}
+    rest = []
+    for job in jobs:
+        key = "" if kept is None else line_key(job, known)
+        if kept is not None and key:
+            before = recall(job, kept, key)
+            if before is not None:
+                done(job, before)
+                continue
+            keys[job.number] = key
+            job = replace(job, identity=identity(key))
+        rest.append(job)
+    for job, outcome in _outcomes(rest, workers, executor):
+        if kept is not None and job.number in keys:
+            outcome = keep(job, kept, keys[job.number], outcome, known)
+        done(job, outcome)
+    if kept is not None:
+        kept.trim()
     return [outcomes[job.number] for job in jobs]
 
 
@@ -352,8 +388,9 @@ def _together(
     outcomes: Sequence[LineOutcome],
     day: DayChoice | None,
     require_assessed: bool,
+    known: Mapping[Path, Content],
 ) -> Findings:
-    inputs = _inputs(failed, outcomes)
+    inputs = _inputs(failed, outcomes, known)
     outcomes = [o for o in outcomes if o.in_scope]
     lines = tuple(o.finding for o in outcomes)
     if not any(line.pings for line in lines):
@@ -468,7 +505,9 @@ def _exit_status(
     return 0
 
 
-def _inputs(failed: Sequence[InputFile], outcomes: Sequence[LineOutcome]) -> tuple[InputFile, ...]:
+def _inputs(
+    failed: Sequence[InputFile], outcomes: Sequence[LineOutcome], known: Mapping[Path, Content]
+) -> tuple[InputFile, ...]:
     found: dict[str, InputFile] = {}
     for outcome in outcomes:
         for account in outcome.accounts:
@@ -488,17 +527,20 @@ def _inputs(failed: Sequence[InputFile], outcomes: Sequence[LineOutcome]) -> tup
                 found[path] = replace(found.get(path) or InputFile(path), error=outcome.input_error)
     for item in failed:
         found[item.path] = item
-    return tuple(_hashed(item) for _, item in sorted(found.items()))
+    return tuple(_hashed(item, known) for _, item in sorted(found.items()))
 
 
 def _added(first: Mapping[str, int], second: Mapping[str, int]) -> dict[str, int]:
     return {k: first.get(k, 0) + second.get(k, 0) for k in sorted({*first, *second})}
 
 
-def _hashed(item: InputFile) -> InputFile:
+def _hashed(item: InputFile, known: Mapping[Path, Content]) -> InputFile:
     path = Path(item.path)
     if item.sha256 is not None or not path.is_file():
         return item
+    content = known.get(path.resolve())
+    if content is not None and content.still(path):
+        return replace(item, sha256=content.sha256, bytes=content.bytes)
     try:
         with path.open("rb") as stream:
             return replace(
@@ -606,7 +648,7 @@ def _sum(values: Iterable[float | None]) -> float | None:
 # Where the results go
 
 
-def checked_target(target: Path, written: str = "findings.json") -> Path:
+def checked_target(target: Path, written: str = KNOWN_BY) -> Path:
     """The target, if it is free or holds what an earlier run wrote; else one clear error."""
     if target.exists() and not target.is_dir():
         raise OutputError(
@@ -631,29 +673,38 @@ def is_earlier_run(folder: Path, written: str) -> bool:
         return False
 
 
-def _folder_beside(target: Path) -> Path:
-    try:
-        target.parent.mkdir(parents=True, exist_ok=True)
-        return Path(tempfile.mkdtemp(prefix=".pingworthy-", dir=target.parent))
-    except OSError as error:
-        raise OutputError(
-            "The results cannot be written there.",
-            where=str(target),
-            found=error.strerror or str(error),
-        ) from None
+@contextmanager
+def _folder_beside(target: Path | None) -> Iterator[Path | None]:
+    """A folder to write into, if anything is to be written."""
+    if target is None:
+        yield None
+        return
+    with ExitStack() as stack:
+        try:
+            folder = stack.enter_context(folder_beside(target))
+        except OSError as error:
+            raise OutputError(
+                "The results cannot be written there.",
+                where=str(target),
+                found=error.strerror or str(error),
+            ) from None
+        yield folder
 
 
 def _move_into_place(folder: Path, target: Path) -> None:
+    """Replace an earlier run's files; its findings, which it is known by, are there at every moment."""
     try:
         target.mkdir(parents=True, exist_ok=True)
+        (folder / KNOWN_BY).replace(target / KNOWN_BY)
         for name in OUTPUTS:
             old = target / name
             if old.is_dir():
                 shutil.rmtree(old)
-            elif old.exists():
+            elif old.exists() and name != KNOWN_BY:
                 old.unlink()
         for item in sorted(folder.iterdir()):
-            item.replace(target / item.name)
+            if item.name in OUTPUTS:
+                item.replace(target / item.name)
     except OSError as error:
         raise OutputError(
             "The results cannot be moved into place.",

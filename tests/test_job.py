@@ -12,18 +12,9 @@ import pytest
 
 from qa.executors import ProcessPool, held_to_threads, run_tasks, share_of_threads
 from qa.job import audit
+from tests.made_lines import files_of, write_line
 
 LINES = 4
-
-
-def write_line(path: Path, line: int, pings: int = 60) -> None:
-    rows = "".join(
-        f"{i},2026-05-{4 + line:02d}T10:00:{i // 5:02d}.{i % 5 * 200:03d}Z,{10 + line + 0.01 * i:.2f},100,"
-        f"{38.7 + i * 4e-6:.6f},{-9.2 + line * 1e-4:.4f}\n"
-        for i in range(pings)
-    )
-    header = "Ping No,Time,Depth (m),Pulse Length (us),latitude,longitude\n"
-    path.write_text(header + rows, encoding="utf-8")
 
 
 @pytest.fixture(scope="module")
@@ -32,14 +23,6 @@ def logs(tmp_path_factory: pytest.TempPathFactory) -> Path:
     for line in range(LINES):
         write_line(folder / f"line_{line}.csv", line)
     return folder
-
-
-def files_of(folder: Path) -> dict[str, bytes]:
-    return {
-        p.relative_to(folder).as_posix(): p.read_bytes()
-        for p in sorted(folder.rglob("*"))
-        if p.is_file()
-    }
 
 
 @pytest.fixture(scope="module")

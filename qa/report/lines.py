@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from qa.model.findings import LineResult
@@ -49,7 +49,7 @@ def line_identity(number: int) -> str:
     return f"L{number:04d}"
 
 
-def write_line(result: LineResult, folder: Path, number: int) -> LineArtifacts:
+def write_line(result: LineResult, folder: Path, number: int, identity: str = "") -> LineArtifacts:
     """Draw a line's figures and write its part of ``pings.parquet``.
 
     Parameters
@@ -60,13 +60,15 @@ def write_line(result: LineResult, folder: Path, number: int) -> LineArtifacts:
         Folder of the whole audit's outputs; ``figures`` and ``pings`` are made in it.
     number : int
         The line's number, which its files and ids are named by.
+    identity : str
+        What ids begin with instead, where the number may change; :func:`renumbered` puts the number's own there.
 
     Returns
     -------
     LineArtifacts
         A small record that travels between processes.
     """
-    identity = line_identity(number)
+    identity = identity or line_identity(number)
     growth = charts.growth_points(result)
     counted = charts.margin_counts(result)
     name = result.finding.line
@@ -98,4 +100,28 @@ def write_line(result: LineResult, folder: Path, number: int) -> LineArtifacts:
         margins=counted,
         places=tracks.section_places(result),
         grid=tracks.section_grid(result),
+    )
+
+
+def renumbered(artifacts: LineArtifacts, number: int, folder: Path, identity: str) -> LineArtifacts:
+    """The artifacts under another number, their files in a folder; ``identity`` is what their ids begin with so far."""
+    figures = folder / "figures" / f"{number:04d}.json"
+    pings = folder / "pings" / f"{number:04d}.arrow"
+    for path in (figures, pings):
+        path.parent.mkdir(parents=True, exist_ok=True)
+    text = artifacts.figures.read_bytes()
+    # A new file: the one that stands there may be kept under another name.
+    figures.unlink(missing_ok=True)
+    figures.write_bytes(text.replace(identity.encode(), line_identity(number).encode()))
+    if artifacts.pings != pings:
+        artifacts.pings.replace(pings)
+    own = {name: f"{number}.{name.rpartition('.')[2]}" for name in artifacts.sections}
+    return replace(
+        artifacts,
+        number=number,
+        figures=figures,
+        pings=pings,
+        sections=tuple(own.values()),
+        places={own[name]: along for name, along in artifacts.places.items()},
+        grid={own[name]: ends for name, ends in artifacts.grid.items()},
     )

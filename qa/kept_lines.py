@@ -1,0 +1,121 @@
+"""Which kept record is a line's: everything that its part of the findings and of the report depends on."""
+
+from __future__ import annotations
+
+import datetime as dt
+import shutil
+from collections.abc import Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
+from functools import cache
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from qa.fingerprints import fingerprint, of_program
+from qa.kept import Content, Kept
+from qa.report import renumbered
+
+if TYPE_CHECKING:
+    from qa.job import LineJob, LineOutcome
+
+_FIGURES, _PINGS = "figures", "pings"
+
+
+def contents(kept: Kept, paths: Sequence[Path], threads: int) -> dict[Path, Content]:
+    """What each file holds; a file that cannot be read is left out, and is said when its line is read."""
+
+    def content(path: Path) -> Content | None:
+        try:
+            return kept.content(path)
+        except OSError:
+            return None
+
+    unique = list(dict.fromkeys(paths))
+    with ThreadPoolExecutor(threads) as pool:
+        found = zip(unique, pool.map(content, unique), strict=True)
+        return {path: known for path, known in found if known is not None}
+
+
+def line_key(job: LineJob, known: Mapping[Path, Content]) -> str:
+    """The key of a line's record; "" where a file's content is not known.
+
+    It holds the program, the line's task (files, what their columns are, rows, day), the files' content, what the
+    survey file says of this log, the sheet with its limits, the cast, and the user's own quantities. The name of the
+    survey, its other parts and the line's number do not count.
+    """
+    paths = [Path(part.probe.path) for part in job.task.parts]
+    if not all(path in known for path in paths):
+        return ""
+    own = job.survey.for_log(paths[0])
+    sheet = job.sheet.load(own)
+    limits = [
+        (x.name, x.text, str(x.unit), x.about, x.source, x.origin) for x in sheet.limits.values()
+    ]
+    said = replace(own, path=None, sha256="", name="", sheet="", limits={}, parts=(), profile=None)
+    return fingerprint(
+        of_program(),
+        job.task,
+        [known[path].sha256 for path in paths],
+        said,
+        None if own.profile is None else _sha256(own.profile),
+        (sheet.name, sheet.sha256, sheet.extends, list(sheet.rules), limits),
+        None if job.sheet.python is None else job.sheet.python.sha256,
+        job.folder is not None,
+    )
+
+
+@cache
+def _sha256(path: Path) -> str:
+    import hashlib
+
+    return hashlib.sha256(path.read_bytes()).hexdigest()
+
+
+def identity(key: str) -> str:
+    """What the ids of a kept line's elements begin with: nothing that its name or its numbers could hold."""
+    return f"L{key[:24]}"
+
+
+def recall(job: LineJob, kept: Kept, key: str) -> LineOutcome | None:
+    """A line's outcome as an earlier audit kept it, its files put into this audit's folder."""
+    if job.folder is None:
+        found: LineOutcome | None = kept.get(key)
+        return None if found is None else replace(found, number=job.number)
+    aside = Path(job.folder) / f"kept-{job.number:04d}"
+    aside.mkdir()
+    try:
+        found = kept.get(key, aside)
+        if found is None:
+            return None
+        if found.artifacts is not None:
+            files = replace(found.artifacts, figures=aside / _FIGURES, pings=aside / _PINGS)
+            found = replace(found, artifacts=files)
+        return numbered(job, found, key)
+    finally:
+        shutil.rmtree(aside, ignore_errors=True)
+
+
+def keep(
+    job: LineJob, kept: Kept, key: str, outcome: LineOutcome, known: Mapping[Path, Content]
+) -> LineOutcome:
+    """Keep a line that was computed, if it will be the same another time; returns it with its number's own ids."""
+    paths = [Path(part.probe.path) for part in job.task.parts]
+    failed = outcome.finding.error is not None and outcome.in_scope
+    # A log that reaches into the future has a note that it loses later.
+    future = (outcome.finding.end or "") > dt.datetime.now(dt.UTC).isoformat()
+    if not failed and not future and all(known[path].still(path) for path in paths):
+        made = outcome.artifacts
+        files = {} if made is None else {_FIGURES: made.figures, _PINGS: made.pings}
+        kept.put(key, outcome, files)
+    return numbered(job, outcome, key)
+
+
+def numbered(job: LineJob, outcome: LineOutcome, key: str) -> LineOutcome:
+    """A line's outcome under the number that its job has in this audit."""
+    sections = tuple(
+        replace(s, id=f"{job.number}.{s.id.rpartition('.')[2]}") for s in outcome.sections
+    )
+    made = outcome.artifacts
+    if made is not None and job.folder is not None:
+        made = renumbered(made, job.number, Path(job.folder), identity(key))
+    return replace(outcome, number=job.number, sections=sections, artifacts=made)
