@@ -62,6 +62,15 @@ Workers = Annotated[
         show_default="as many as the machine runs",
     ),
 ]
+Cluster = Annotated[
+    str | None,
+    typer.Option(
+        "--cluster",
+        metavar="ADDRESS",
+        help="Compute on the workers of a Dask scheduler, as in tcp://10.0.0.5:8786; they read the logs under the same paths.",
+        show_default=False,
+    ),
+]
 KeepIn = Annotated[
     Path | None,
     typer.Option(
@@ -125,6 +134,7 @@ def audit(
     limits: Limits = None,
     day: Day = None,
     workers: Workers = None,
+    cluster: Cluster = None,
     keep_in: KeepIn = None,
     no_keep: NoKeep = False,
     rehash: Rehash = False,
@@ -141,6 +151,7 @@ def audit(
         list(logs),
         *(survey, sheet, out, limits, day, workers, require_assessed, pages, quiet, allow_python),
         kept=_kept(keep_in, no_keep, rehash),
+        cluster=cluster,
     )
 
 
@@ -370,11 +381,19 @@ def _audit(
     quiet: bool,
     allow_python: bool = False,
     kept: Kept | None = None,
+    cluster: str | None = None,
 ) -> None:
+    from qa.executors import ClusterPool
     from qa.job import audit as run
     from qa.model.survey_file import load_survey_file
     from qa.report import summary
 
+    if cluster is not None and workers is not None:
+        raise PingworthyError(
+            "A cluster has its own workers.",
+            where="--workers",
+            advice="Leave --workers or --cluster out.",
+        )
     if pages not in ("auto", "one", "many"):
         raise PingworthyError(
             "Not a way to lay out pages.",
@@ -398,6 +417,7 @@ def _audit(
             progress=progress,
             allow_python=allow_python,
             kept=kept,
+            executor=None if cluster is None else ClusterPool(cluster),
         )
     if kept is not None and not quiet:
         if kept.taken:

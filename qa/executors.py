@@ -20,7 +20,10 @@ from concurrent.futures import (
 )
 from contextlib import contextmanager
 from dataclasses import dataclass
-from typing import TypeVar
+from importlib import import_module
+from typing import Any, TypeVar
+
+from qa.model.errors import PingworthyError
 
 Task = TypeVar("Task")
 Result = TypeVar("Result")
@@ -164,3 +167,97 @@ def _one_by_one(
     finally:
         if pool is not None:
             pool.shutdown(wait=False, cancel_futures=True)
+
+
+@dataclass(frozen=True, slots=True)
+class ClusterPool:
+    """Makes executors that run tasks on the workers of a Dask scheduler.
+
+    Its workers read the logs, and the survey file's cast, under the same paths as this process; what they write
+    travels back, so that nothing else need be shared.
+
+    Parameters
+    ----------
+    address : str
+        Where the scheduler listens, as in "tcp://10.0.0.5:8786".
+    timeout : float
+        Seconds to wait for the scheduler, and for a first worker.
+    """
+
+    address: str
+    timeout: float = 10.0
+
+    def __call__(self) -> Executor:
+        try:
+            distributed: Any = import_module("distributed")
+        except ImportError:
+            raise PingworthyError(
+                "The package for clusters is not installed.",
+                where="--cluster",
+                advice='Install it with pip install "pingworthy[cluster]".',
+            ) from None
+        try:
+            client = distributed.Client(self.address, timeout=self.timeout, set_as_default=False)
+        except (OSError, TimeoutError, ValueError) as error:
+            raise PingworthyError(
+                "No scheduler answers there.",
+                where=f"--cluster {self.address}",
+                found=str(error) or type(error).__name__,
+                expected="the address that the scheduler printed, such as tcp://10.0.0.5:8786",
+            ) from None
+        try:
+            self._check_workers(client)
+        except BaseException:
+            client.close()
+            raise
+        return _Cluster(client)
+
+    def _check_workers(self, client: Any) -> None:
+        """Workers that run another program would compute something else."""
+        from qa.fingerprints import of_program
+
+        try:
+            client.wait_for_workers(1, timeout=self.timeout)
+        except TimeoutError:
+            raise PingworthyError(
+                "The scheduler has no workers.",
+                where=f"--cluster {self.address}",
+                advice="Start workers, with pingworthy installed, and try again.",
+            ) from None
+        try:
+            found = client.run(_program_here, on_error="return")
+        except ImportError as error:
+            found = {"": error}
+        for worker, told in sorted(found.items()):
+            if told != of_program():
+                raise PingworthyError(
+                    "A worker runs another program.",
+                    where=f"--cluster {self.address}: worker {worker}",
+                    found=str(told) if isinstance(told, Exception) else "other versions",
+                    expected="the same pingworthy, Python, numpy and pyarrow as here",
+                )
+
+
+def _program_here() -> str:
+    from qa.fingerprints import of_program
+
+    return of_program()
+
+
+class _Cluster(Executor):
+    """A client's executor, whose end is the client's end too."""
+
+    def __init__(self, client: Any) -> None:
+        self.client = client
+        self.executor = client.get_executor(pure=False)
+        self._max_workers = sum(client.nthreads().values())
+
+    def submit(self, fn: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future[Any]:
+        """Hand a task to the scheduler."""
+        future: Future[Any] = self.executor.submit(fn, *args, **kwargs)
+        return future
+
+    def shutdown(self, wait: bool = True, *, cancel_futures: bool = False) -> None:
+        """Leave the scheduler; its workers stay."""
+        self.executor.shutdown(wait=wait)
+        self.client.close()

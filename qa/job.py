@@ -10,6 +10,7 @@ import hashlib
 import json
 import os
 import shutil
+import tempfile
 import traceback
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
@@ -23,6 +24,7 @@ from qa.engine.evaluate import evaluate_line
 from qa.engine.sheets import RuleSheet, load_sheet
 from qa.engine.user_quantities import UserPython, allowed_python, check_inputs, use_python
 from qa.executors import (
+    ClusterPool,
     ExecutorFactory,
     ProcessPool,
     held_to_threads,
@@ -72,6 +74,11 @@ class SheetChoice:
     overrides: tuple[tuple[str, Any], ...]
     python: UserPython | None = None
 
+    def absolute(self) -> SheetChoice:
+        """The same with places that are the same from any working folder."""
+        python = self.python and replace(self.python, path=self.python.path.absolute())
+        return replace(self, base=str(Path(self.base).absolute()), python=python)
+
     def load(self, survey: SurveyFile) -> RuleSheet:
         """The sheet with the survey's limits; the user's own quantities are in use from here on."""
         use_python(self.python)
@@ -119,6 +126,10 @@ class LineOutcome:
     in_scope: bool = True
 
 
+Parcel = tuple[LineOutcome, bytes, bytes]
+"""A line's outcome with its figures and pings, from a machine that writes none of this one's files."""
+
+
 def audit(
     logs: Sequence[str | Path] | str | Path,
     survey: str | Path | SurveyFile | None = None,
@@ -161,7 +172,8 @@ def audit(
     progress : callable, optional
         Called with lines done, lines in all and the name of the line just done.
     executor : callable, optional
-        Makes any ``concurrent.futures`` executor to run lines on.
+        Makes any ``concurrent.futures`` executor to run lines on, such as :class:`qa.executors.ClusterPool`. Where
+        its workers are other machines, they read the logs under the same paths.
     allow_python : bool
         Whether the Python file that the survey file names, if any, may be run.
     kept : Kept, optional
@@ -192,8 +204,11 @@ def audit(
     target = None if out is None else checked_target(Path(out))
     plan = plan_logs(paths, facts, day)
     with _folder_beside(target) as folder:
+        survey_there, sheet_there = _absolute(facts), choice.absolute()
         jobs = [
-            LineJob(number, task, facts, choice, None if folder is None else str(folder))
+            LineJob(
+                number, task, survey_there, sheet_there, None if folder is None else str(folder)
+            )
             for number, task in enumerate(plan.lines, start=1)
         ]
         budget = workers or os.cpu_count() or 1
@@ -219,6 +234,15 @@ def _sheet_choice(
         name, base = survey.sheet or "physics", survey.folder
     python = allowed_python(survey, allow_python)
     return SheetChoice(name, str(base), tuple(limits.items()), python)
+
+
+def _absolute(survey: SurveyFile) -> SurveyFile:
+    """The survey file with places that are the same from any working folder."""
+    return replace(
+        survey,
+        path=None if survey.path is None else survey.path.absolute(),
+        profile=None if survey.profile is None else survey.profile.absolute(),
+    )
 
 
 def _check_parts(choice: SheetChoice, survey: SurveyFile) -> None:
@@ -370,11 +394,42 @@ def _outcomes(
                     yield job, run_line(job)
             return
         executor = ProcessPool(processes, threads)
+    if isinstance(executor, ClusterPool):
+        for job, (outcome, figures, pings) in run_tasks(run_line_away, jobs, executor, _lost_away):
+            yield job, _arrived(job, outcome, figures, pings)
+        return
     yield from run_tasks(run_line, jobs, executor, _lost)
 
 
 def _lost(job: LineJob, why: str) -> LineOutcome:
     return _failed(job, why, None)
+
+
+def run_line_away(job: LineJob) -> Parcel:
+    """One line, on a machine that need not share a folder for outputs: what is written comes along as bytes."""
+    if job.folder is None:
+        return run_line(job), b"", b""
+    with tempfile.TemporaryDirectory(prefix="pingworthy-") as folder:
+        outcome = run_line(replace(job, folder=folder))
+        made = outcome.artifacts
+        if made is None:
+            return outcome, b"", b""
+        return outcome, made.figures.read_bytes(), made.pings.read_bytes()
+
+
+def _lost_away(job: LineJob, why: str) -> Parcel:
+    return _lost(job, why), b"", b""
+
+
+def _arrived(job: LineJob, outcome: LineOutcome, figures: bytes, pings: bytes) -> LineOutcome:
+    """The outcome of a line from another machine, its files put where they would have been written here."""
+    if outcome.artifacts is None or job.folder is None:
+        return outcome
+    made = outcome.artifacts.moved(Path(job.folder))
+    for path, content in ((made.figures, figures), (made.pings, pings)):
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_bytes(content)
+    return replace(outcome, artifacts=made)
 
 
 # Lines put together

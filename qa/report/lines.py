@@ -37,6 +37,11 @@ class LineArtifacts:
         """What the ids of the line's elements begin with: never the line's own name."""
         return line_identity(self.number)
 
+    def moved(self, folder: Path) -> LineArtifacts:
+        """The same, with its files in another audit's folder, under the number's names."""
+        figures, pings = line_files(folder, self.number)
+        return replace(self, figures=figures, pings=pings)
+
 
 def line_identity(number: int) -> str:
     """The id of a line's place in the report.
@@ -47,6 +52,11 @@ def line_identity(number: int) -> str:
     'L0007'
     """
     return f"L{number:04d}"
+
+
+def line_files(folder: Path, number: int) -> tuple[Path, Path]:
+    """Where a line's figures and pings are written, in the folder of the whole audit."""
+    return folder / "figures" / f"{number:04d}.json", folder / "pings" / f"{number:04d}.arrow"
 
 
 def write_line(result: LineResult, folder: Path, number: int, identity: str = "") -> LineArtifacts:
@@ -81,13 +91,12 @@ def write_line(result: LineResult, folder: Path, number: int, identity: str = ""
             [growth] if growth else [], f"{identity}-growth", word("growth.title", line=shown)
         ),
     ]
-    figures = folder / "figures" / f"{number:04d}.json"
+    figures, pings = line_files(folder, number)
     figures.parent.mkdir(parents=True, exist_ok=True)
     kept = [f for f in drawn if f is not None]
     # A file's name may hold bytes that are no text; they are replaced, here as in the report.
     text = json.dumps(kept, ensure_ascii=False, separators=(",", ":"))
     figures.write_bytes(text.encode("utf-8", "replace"))
-    pings = folder / "pings" / f"{number:04d}.arrow"
     ping_table.write_part(result, pings)
     return LineArtifacts(
         line=name,
@@ -105,8 +114,7 @@ def write_line(result: LineResult, folder: Path, number: int, identity: str = ""
 
 def renumbered(artifacts: LineArtifacts, number: int, folder: Path, identity: str) -> LineArtifacts:
     """The artifacts under another number, their files in a folder; ``identity`` is what their ids begin with so far."""
-    figures = folder / "figures" / f"{number:04d}.json"
-    pings = folder / "pings" / f"{number:04d}.arrow"
+    figures, pings = line_files(folder, number)
     for path in (figures, pings):
         path.parent.mkdir(parents=True, exist_ok=True)
     text = artifacts.figures.read_bytes()
