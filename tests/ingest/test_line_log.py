@@ -139,3 +139,15 @@ def test_a_ping_without_beams_keeps_its_place(tmp_path: Path) -> None:
     found = read_log(path)
     assert found.column("ping").to_pylist() == [1, 1, 2, 3, 3]
     np.testing.assert_allclose(found.column("depth").to_numpy(), [10, 11, np.nan, 12, 13])
+
+
+def test_a_clock_that_steps_back_again_and_again_keeps_the_order_of_the_file(
+    tmp_path: Path,
+) -> None:
+    at = np.arange(100) * 200
+    at[20:60:2] -= 300  # every second ping of forty: a fifth of all rows fall
+    log = tmp_path / "stepping.csv"
+    rows = "".join(f"{1_700_000_000_000 + t},{10 + i / 100}\n" for i, t in enumerate(at))
+    log.write_text(f"Epoch (ms),Depth (m)\n{rows}", encoding="utf-8")
+    table = read_log(log)
+    assert table["depth"].to_pylist() == pytest.approx([10 + i / 100 for i in range(100)])
