@@ -148,16 +148,18 @@ class SurveyFile:
     def for_log(self, log: Path | str) -> SurveyFile:
         """What holds for one log: each [[part]] whose ``logs`` match it, laid over the rest in order."""
         here = self
+        if not self.parts:
+            return here
+        full, folder = Path(log).resolve().as_posix(), self.folder.resolve()
         for patterns, tables in self.parts:
-            if any(_matches(Path(log), pattern, self.folder) for pattern in patterns):
+            if any(_matches(full, pattern, folder) for pattern in patterns):
                 here = _overlaid(here, tables)
         return here
 
 
-def _matches(log: Path, pattern: str, folder: Path) -> bool:
-    full = log.resolve().as_posix()
-    wanted = (folder.resolve() / pattern).as_posix() if not Path(pattern).is_absolute() else pattern
-    return fnmatch.fnmatchcase(full, posixpath.normpath(wanted))
+def _matches(log: str, pattern: str, folder: Path) -> bool:
+    wanted = (folder / pattern).as_posix() if not Path(pattern).is_absolute() else pattern
+    return fnmatch.fnmatchcase(log, posixpath.normpath(wanted))
 
 
 def load_survey_file(path: Path | str) -> SurveyFile:
