@@ -421,10 +421,7 @@ def _audit(
         )
     if kept is not None and not quiet:
         if kept.taken:
-            typer.echo(
-                f"{kept.taken} of {len(findings.lines)} lines unchanged, taken from {kept.folder}",
-                err=True,
-            )
+            typer.echo(f"{kept.taken} lines unchanged, taken from {kept.folder}", err=True)
         if kept.trouble:
             typer.echo(f"Lines are not kept for another time: {kept.trouble}", err=True)
     if not quiet:

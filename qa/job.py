@@ -254,12 +254,18 @@ def _check_parts(choice: SheetChoice, survey: SurveyFile) -> None:
 
 
 def cast_of(survey: SurveyFile) -> Cast | None:
-    """The sound speed cast that the survey file names, read once."""
-    return None if survey.profile is None else _read_cast(survey.profile)
+    """The sound speed cast that the survey file names, read once as long as the file stays as it is."""
+    if survey.profile is None:
+        return None
+    try:
+        about = survey.profile.stat()
+    except OSError:
+        return read_cast(survey.profile)
+    return _read_cast(survey.profile, (about.st_size, about.st_mtime_ns))
 
 
 @lru_cache(maxsize=8)
-def _read_cast(path: Path) -> Cast:
+def _read_cast(path: Path, stamp: tuple[int, int]) -> Cast:
     return read_cast(path)
 
 
@@ -362,7 +368,7 @@ def _run(
     keys: dict[int, str] = {}
     rest = []
     for job in jobs:
-        key = "" if kept is None else line_key(job, known)
+        key = "" if kept is None else line_key(job, known, cast_of)
         if kept is not None and key:
             before = recall(job, kept, key)
             if before is not None:

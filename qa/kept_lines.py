@@ -4,20 +4,22 @@ from __future__ import annotations
 
 import datetime as dt
 import shutil
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
-from functools import cache
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from qa.fingerprints import fingerprint, of_program
 from qa.kept import Content, Kept
+from qa.model.cast import Cast
+from qa.model.survey_file import SurveyFile
 from qa.report import renumbered
 
 if TYPE_CHECKING:
     from qa.job import LineJob, LineOutcome
 
+CastOf = Callable[[SurveyFile], Cast | None]
 _FIGURES, _PINGS = "figures", "pings"
 
 
@@ -36,7 +38,7 @@ def contents(kept: Kept, paths: Sequence[Path], threads: int) -> dict[Path, Cont
         return {path: known for path, known in found if known is not None}
 
 
-def line_key(job: LineJob, known: Mapping[Path, Content]) -> str:
+def line_key(job: LineJob, known: Mapping[Path, Content], cast_of: CastOf) -> str:
     """The key of a line's record; "" where a file's content is not known.
 
     It holds the program, the line's task (files, what their columns are, rows, day), the files' content, what the
@@ -57,18 +59,11 @@ def line_key(job: LineJob, known: Mapping[Path, Content]) -> str:
         job.task,
         [known[path].sha256 for path in paths],
         said,
-        None if own.profile is None else _sha256(own.profile),
+        cast_of(own),
         (sheet.name, sheet.sha256, sheet.extends, list(sheet.rules), limits),
         None if job.sheet.python is None else job.sheet.python.sha256,
         job.folder is not None,
     )
-
-
-@cache
-def _sha256(path: Path) -> str:
-    import hashlib
-
-    return hashlib.sha256(path.read_bytes()).hexdigest()
 
 
 def identity(key: str) -> str:

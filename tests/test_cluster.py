@@ -7,12 +7,14 @@ import re
 import socket
 import subprocess
 import sys
+import threading
 from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 
 import pytest
 
-from qa.executors import ClusterPool
+from qa.executors import ClusterPool, run_tasks
 from qa.job import audit
 from qa.kept import Kept
 from qa.model.errors import PingworthyError
@@ -33,25 +35,30 @@ def started(*arguments: str, folder: Path) -> subprocess.Popen[str]:
         text=True,
         encoding="utf-8",
         cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(ROOT)},
+        env={
+            **os.environ,
+            "PYTHONPATH": os.pathsep.join([str(ROOT), str(folder)]),
+            "DASK_DISTRIBUTED__SCHEDULER__ALLOWED_FAILURES": "1",
+        },
     )
 
 
 def said(process: subprocess.Popen[str], pattern: str) -> str:
-    """The first text of a process that matches, waited for."""
-    assert process.stderr is not None
+    """The first text of a process that matches, waited for; what comes after it is read too, so that it never waits."""
+    stream = process.stderr
+    assert stream is not None
     seen = []
-    for line in process.stderr:
+    for line in stream:
         seen.append(line)
         if found := re.search(pattern, line):
+            threading.Thread(target=lambda: list(stream), daemon=True).start()
             return found[1]
     raise AssertionError("".join(seen))
 
 
-@pytest.fixture(scope="module")
-def scheduler(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
+@contextmanager
+def cluster(folder: Path, *of_worker: str) -> Iterator[str]:
     """A scheduler and two workers, processes of their own in a folder of their own."""
-    folder = tmp_path_factory.mktemp("cluster")
     running = []
     try:
         running.append(
@@ -65,8 +72,8 @@ def scheduler(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
         for _ in range(2):
             worker = started(
                 *("distributed.cli.dask_worker", address, "--host", "127.0.0.1"),
-                *("--nthreads", "1", "--no-nanny", "--no-dashboard"),
-                *("--local-directory", str(folder)),
+                *("--nthreads", "1", "--no-dashboard", "--local-directory", str(folder)),
+                *of_worker,
                 folder=folder,
             )
             running.append(worker)
@@ -74,8 +81,15 @@ def scheduler(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
         yield address
     finally:
         for process in reversed(running):
-            process.kill()
-            process.communicate()
+            process.terminate()
+        for process in running:
+            process.wait(30)
+
+
+@pytest.fixture(scope="module")
+def scheduler(tmp_path_factory: pytest.TempPathFactory) -> Iterator[str]:
+    with cluster(tmp_path_factory.mktemp("cluster"), "--no-nanny") as address:
+        yield address
 
 
 @pytest.fixture(scope="module")
@@ -187,3 +201,25 @@ def test_workers_that_run_another_program_are_refused(
     monkeypatch.setattr(qa.fingerprints, "of_program", lambda: "another")
     with pytest.raises(PingworthyError, match="runs another program"):
         qa.executors.ClusterPool(scheduler)()
+
+
+def test_a_task_that_ends_its_worker_is_reported_and_the_others_finish(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    (tmp_path / "deadly_task.py").write_text(
+        "import os\n\n"
+        "def double(task):\n"
+        "    if task == 3:\n"
+        "        os._exit(7)\n"
+        "    return 2 * task\n",
+        encoding="utf-8",
+    )
+    monkeypatch.syspath_prepend(str(tmp_path))
+    import deadly_task  # type: ignore[import-not-found]
+
+    with cluster(tmp_path) as address:
+        results = dict(
+            run_tasks(deadly_task.double, range(8), ClusterPool(address), lambda _, why: why)
+        )
+    assert "KilledWorker" in results.pop(3)
+    assert results == {n: 2 * n for n in range(8) if n != 3}
