@@ -11,9 +11,12 @@ from zoneinfo import ZoneInfo
 import numpy as np
 from numpy.typing import NDArray
 
+from qa.ingest import spill
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Rows, Stretch
+from qa.ingest.second_reading import ReadBefore, SecondReading
 from qa.ingest.spill import Spill
+from qa.ingest.table_source import TableFormat
 from qa.ingest.times import resolution
 from qa.model.columns import COLUMNS
 from qa.model.log import BeamBatch, ChannelSpan, FileAccount, PingTable
@@ -107,6 +110,15 @@ class _Places:
         stretch = np.searchsorted(at, places, side="right") - 1
         return number[stretch] + places - at[stretch]
 
+    def spans(self, start: int, stop: int) -> tuple[Integers, Integers]:
+        """First and last row numbers of the stretches of a part of the stream that begins and ends with a batch."""
+        if start == stop:
+            return np.zeros(0, dtype=np.int64), np.zeros(0, dtype=np.int64)
+        at = np.concatenate(self._at)
+        low, high = np.searchsorted(at, [start, stop])
+        first = np.concatenate(self._number)[low:high]
+        return first, first + np.diff(np.append(at[low:high], stop)) - 1
+
 
 class OpenedLine:
     """A line of a log, as :class:`qa.model.log.LineLog` wants it."""
@@ -120,7 +132,7 @@ class OpenedLine:
         self._grain: Literal["ping", "beam"] = "beam" if "beam" in grains else "ping"
         self._table: PingTable | None = None
         self._readers: list[RowReader] = []
-        self._spill = Spill()
+        self._spill: Spill | SecondReading = Spill()
         self._beam_columns: frozenset[str] = frozenset()
         self._counts: Integers = np.zeros(0, dtype=np.int64)
         self._position: Integers = np.zeros(0, dtype=np.int64)
@@ -216,7 +228,10 @@ class OpenedLine:
         names = Names()
         runs = _Runs([], [], [], [], [], [], [], [])
         present: dict[str, bool] = {}
+        aside = None if self._reads_twice() else Spill()
+        read: list[ReadBefore] = []
         for at, part in enumerate(self._parts):
+            start = self._places.count
             reader = RowReader(part.probe, names, stretch=part.stretch)
             self._readers.append(reader)
             if part.met is not None:
@@ -224,17 +239,38 @@ class OpenedLine:
                 reader.account.notes.append(
                     f"{count} rows stand in {part.met_in} too, value for value; each was counted once, there."
                 )
-            self._read_file(at, part, reader, runs, present)
-        self._spill.finish()
+            self._read_file(at, part, reader, runs, present, aside)
+            spans = self._places.spans(start, self._places.count)
+            read.append(ReadBefore(part.probe, part.stretch, *spans))
+        if aside is None:
+            self._spill = SecondReading(read)
+        else:
+            aside.finish()
+            self._spill = aside
         self._beam_columns = frozenset(name for name, there in present.items() if there)
         return self._assembled(runs, names)
 
+    def _reads_twice(self) -> bool:
+        """Whether beams can be read again by column, and are too many to be held in memory till then."""
+        size = 0
+        for probe in (part.probe for part in self._parts):
+            form = probe.form
+            if probe.grain != "beam" or probe.layout != "long" or probe.times.rolls_over:
+                return False
+            if not isinstance(form, TableFormat) or form.kind != "parquet":
+                return False
+            size += 8 * form.rows * len(self._stored)
+        return size > spill.IN_MEMORY
+
     def _read_file(
-        self, at: int, part: FilePart, reader: RowReader, runs: _Runs, present: dict[str, bool]
+        self,
+        at: int,
+        part: FilePart,
+        reader: RowReader,
+        runs: _Runs,
+        present: dict[str, bool],
+        aside: Spill | None,
     ) -> None:
-        beam_roles = [b.role for b in part.probe.bindings if COLUMNS[b.role].grain == "beam"]
-        if part.probe.layout == "wide":
-            beam_roles.append("beam")
         stored = self._stored
         last: dict[str, Any] | None = None
         for rows in reader.batches():
@@ -250,7 +286,7 @@ class OpenedLine:
             self._places.add(rows.numbers)
             self._note_beam_order(rows, starts, continues)
             self._keep(rows, starts, continues, runs, at)
-            self._put_aside(rows, stored, present)
+            self._put_aside(rows, stored, present, aside)
         self._resolve_notes(reader, runs, at)
 
     def _in_scope(self, rows: Rows, part: FilePart, reader: RowReader) -> Rows:
@@ -373,8 +409,16 @@ class OpenedLine:
         runs.columns.append(columns)
 
     @np.errstate(invalid="ignore")  # a damaged float may be a NaN of the signalling kind
-    def _put_aside(self, rows: Rows, stored: Sequence[str], present: dict[str, bool]) -> None:
+    def _put_aside(
+        self, rows: Rows, stored: Sequence[str], present: dict[str, bool], aside: Spill | None
+    ) -> None:
         if not stored:
+            return
+        if aside is None:
+            for name in stored:
+                values = rows.beams.get(name)
+                if values is not None and not present.get(name, False):
+                    present[name] = name == "accepted" or not bool(np.isnan(values).all())
             return
         total = int(rows.counts.sum())
         columns: dict[str, NDArray[Any]] = {}
@@ -391,7 +435,7 @@ class OpenedLine:
                 values = np.asarray(values, dtype=np.float64)
                 present[name] = present.get(name, False) or not bool(np.isnan(values).all())
             columns[name] = values
-        self._spill.append(columns)
+        aside.append(columns)
 
     def _resolve_notes(self, reader: RowReader, runs: _Runs, at: int) -> None:
         times = [t for t, f in zip(runs.time, runs.file, strict=True) if len(f) and f[0] == at]
@@ -616,10 +660,10 @@ class OpenedLine:
             np.lexsort((arrays["beam"][row_order], rank[group[owner[row_order]]]))
         ]
         self._beams_ordered = True
-        spill = Spill()
-        spill.append({n: v[row_order] for n, v in arrays.items()})
-        spill.finish()
-        self._spill = spill
+        together = Spill()
+        together.append({n: v[row_order] for n, v in arrays.items()})
+        together.finish()
+        self._spill = together
         first = np.unique(rank[group[kept]])
         merged = np.searchsorted(first, rank[group[owner[row_order]]])
         self._counts = np.bincount(merged, minlength=len(first)).astype(np.int64)

@@ -155,6 +155,19 @@ class RowReader:
         if isinstance(opened, TextSource) and opened.seekable:
             self.starts = opened.starts
 
+    def beams(self) -> Iterator[tuple[Integers, dict[str, NDArray[Any]]]]:
+        """Beam columns and their rows' numbers, without a look at times or at what is to be rejected."""
+        opened = self.probe.open()
+        assert isinstance(opened, TableSource)
+        sources = [b.source for b in self.bindings]
+        try:
+            with np.errstate(over="ignore", invalid="ignore"):
+                for _, raw in opened.batches(sources, groups=self._groups(opened)):
+                    if raw.length:
+                        yield raw.rows, self._converted(raw, raw.rows, []).beams
+        finally:
+            opened.close()
+
     def _groups(self, opened: TableSource) -> list[int] | None:
         if self.stretch is None or self.probe.times.rolls_over:
             return None
