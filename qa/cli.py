@@ -526,7 +526,10 @@ def main() -> None:
         typer.echo(f"pingworthy: {error}", err=True)
         sys.exit(2)
     except KeyboardInterrupt:
-        typer.echo("pingworthy: stopped; nothing was written.", err=True)
+        typer.echo(
+            "pingworthy: stopped; no report was written. The same command goes on where it was.",
+            err=True,
+        )
         sys.exit(130)
     except Exception as error:
         typer.echo(
