@@ -382,43 +382,33 @@ quantity(
     about="Angle at which sound meets a flat seabed at the farthest wanted range.",
     formula="acos(z/R)",
 )
-_SONAR_EQUATION = (
+_SONAR = (
     *("source_level", "wanted_range", "incidence_angle", "absorption", "noise_level"),
     *("directivity_index", "beamwidth_along", "beamwidth_across", "range_resolution"),
-    *("detection_threshold", "processing_gain", "backscatter_normal", "backscatter_oblique"),
+    "detection_threshold",
 )
-_HEARD = ("source_level", "altitude", "least_margin", *_SONAR_EQUATION[3:])
-quantity(
-    "echo_margin",
-    sonar_equation.seabed_margin,
-    unit="dB",
-    needs=_SONAR_EQUATION,
-    source="C-13 eqs. 3.4–3.16",
-)
-quantity(
-    "target_margin",
-    sonar_equation.target_margin,
-    unit="dB",
-    needs=(*_SONAR_EQUATION, "target_strength"),
-    source="C-13 eqs. 3.4–3.16",
-)
-quantity(
-    "heard_range",
-    sonar_equation.seabed_heard_range,
-    unit="m",
-    needs=_HEARD,
-    source="C-13 eqs. 3.4–3.16",
-    formula="the root of echo_margin = least_margin",
-)
-quantity(
-    "target_heard_range",
-    sonar_equation.target_heard_range,
-    unit="m",
-    needs=(*_HEARD, "target_strength"),
-    source="C-13 eqs. 3.4–3.16",
-    formula="the root of target_margin = least_margin",
-)
-
+_SEABED = ("processing_gain", "backscatter_normal", "backscatter_oblique")
+_OF_SEABED = (*_SONAR, *_SEABED)
+_OF_TARGET = (*_SONAR, "target_strength", *_SEABED)
+for _whose, _all, _margin, _heard in (
+    ("", _OF_SEABED, echoes.seabed_echo_margin, sonar_equation.seabed_heard_range),
+    ("target_", _OF_TARGET, echoes.target_echo_margin, sonar_equation.target_heard_range),
+):
+    quantity(
+        f"{_whose or 'echo_'}margin",
+        _margin,
+        unit="dB",
+        needs=_all,
+        source="C-13 eqs. 3.4–3.16",
+    )
+    quantity(
+        f"{_whose}heard_range",
+        _heard,
+        unit="m",
+        needs=("source_level", "altitude", "least_margin", *_all[3:]),
+        source="C-13 eqs. 3.4–3.16",
+        formula=f"the root of {_whose or 'echo_'}margin = least_margin",
+    )
 quantity(
     "detection_confidence",
     hits.detection_confidence,

@@ -31,82 +31,14 @@ def matched_gain(pulse_length: Any, receiver_bandwidth: Any) -> Any:
     return np.maximum(echoes.processing_gain(receiver_bandwidth, pulse_length), 0.0)
 
 
-def seabed_margin(
-    source_level: Any,
-    wanted_range: Any,
-    incidence_angle: Any,
-    absorption: Any,
-    noise_level: Any,
-    directivity_index: Any,
-    beamwidth_along: Any,
-    beamwidth_across: Any,
-    range_resolution: Any,
-    detection_threshold: Any,
-    processing_gain: Any,
-    backscatter_normal: Any,
-    backscatter_oblique: Any,
-) -> Any:
-    """How far the seabed's echo at the farthest wanted range stands above what is needed to detect it."""
-    return echoes.seabed_echo_margin(
-        source_level,
-        wanted_range,
-        incidence_angle,
-        absorption,
-        noise_level,
-        directivity_index,
-        beamwidth_along,
-        beamwidth_across,
-        range_resolution,
-        detection_threshold,
-        processing_gain=processing_gain,
-        backscatter_normal=backscatter_normal,
-        backscatter_oblique=backscatter_oblique,
-    )
-
-
-def target_margin(
-    source_level: Any,
-    wanted_range: Any,
-    incidence_angle: Any,
-    absorption: Any,
-    noise_level: Any,
-    directivity_index: Any,
-    beamwidth_along: Any,
-    beamwidth_across: Any,
-    range_resolution: Any,
-    detection_threshold: Any,
-    processing_gain: Any,
-    backscatter_normal: Any,
-    backscatter_oblique: Any,
-    target_strength: Any,
-) -> Any:
-    """How far a target's echo at the farthest wanted range stands above noise and seabed, whichever limits."""
-    return echoes.target_echo_margin(
-        source_level,
-        wanted_range,
-        incidence_angle,
-        absorption,
-        noise_level,
-        directivity_index,
-        beamwidth_along,
-        beamwidth_across,
-        range_resolution,
-        detection_threshold,
-        target_strength,
-        processing_gain=processing_gain,
-        backscatter_normal=backscatter_normal,
-        backscatter_oblique=backscatter_oblique,
-    )
-
-
 def seabed_heard_range(source_level: Any, altitude: Any, least_margin: Any, *rest: Any) -> Floats:
     """Farthest range at which the seabed's echo still has the least margin, at each ping's height; 0 for none."""
-    return _heard(seabed_margin, source_level, altitude, least_margin, rest)
+    return _heard(echoes.seabed_echo_margin, source_level, altitude, least_margin, rest)
 
 
 def target_heard_range(source_level: Any, altitude: Any, least_margin: Any, *rest: Any) -> Floats:
     """Farthest range at which the target's echo still has the least margin, at each ping's height; 0 for none."""
-    return _heard(target_margin, source_level, altitude, least_margin, rest)
+    return _heard(echoes.target_echo_margin, source_level, altitude, least_margin, rest)
 
 
 def _heard(
