@@ -527,7 +527,7 @@ def main() -> None:
         sys.exit(2)
     except KeyboardInterrupt:
         typer.echo(
-            "pingworthy: stopped; no report was written. The same command goes on where it was.",
+            "pingworthy: stopped; no results were written.",
             err=True,
         )
         sys.exit(130)
