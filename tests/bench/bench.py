@@ -368,7 +368,7 @@ def start_up(folder: Path, rounds: int) -> None:
         # The exit status says what was found; nothing is out of reach of it here but faults of the log.
         began = time.perf_counter()
         found = subprocess.run(
-            [*run, "audit", str(path), "--survey", survey, "--out", out],
+            [*run, "audit", str(path), "--survey", survey, "--out", out, "--no-keep"],
             cwd=ROOT,
             capture_output=True,
         )
