@@ -15,6 +15,7 @@ Times = NDArray[np.int64]
 
 ALONG_WINDOW = 15
 TREND_WINDOW = 51
+OWN_WINDOW = 5
 WOBBLE_SECONDS = 30.0
 
 
@@ -112,8 +113,21 @@ def fan_curl(height: Any, angle_from_vertical: Any, accepted: Any, groups: Group
 
 
 def lasting(values: Floats) -> Floats:
-    """Size of a value's median over the 51 pings around each: what lasts, without its noise."""
-    return np.abs(running_median(values, TREND_WINDOW))
+    """Size of a value that lasts: of its median over 51 pings, but no more than over the 5 around the ping itself.
+
+    The greatest of the long medians that the ping is part of tells that something lasts, the short one where it
+    begins and ends.
+    """
+    if not len(values):
+        return np.zeros(0)
+    trend = np.abs(running_median(values, TREND_WINDOW))
+    half = TREND_WINDOW // 2
+    padded = np.concatenate(
+        [np.full(half, -np.inf), np.nan_to_num(trend, nan=-np.inf), np.full(half, -np.inf)]
+    )
+    greatest = np.lib.stride_tricks.sliding_window_view(padded, TREND_WINDOW).max(axis=1)
+    own = np.abs(running_median(values, OWN_WINDOW))
+    return np.where(np.isinf(greatest), np.nan, np.minimum(greatest[: len(values)], own))
 
 
 def wobble_gain(time: Times, fan_tilt: Floats, roll: Floats) -> Floats:

@@ -500,7 +500,7 @@ def _(line: Set, s: float) -> None:
     line.beams["two_way_time"][HERE] *= 1.0 + 0.03 * s
 
 
-@case("swath-curl", ends=26)
+@case("swath-curl")
 def _(line: Set, s: float) -> None:
     tangent = np.tan(np.radians(line.beams["beam_angle"][HERE]))
     line.beams["depth"][HERE] -= 0.05 * s * HEIGHT * tangent**2

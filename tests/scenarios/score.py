@@ -43,7 +43,7 @@ FOLLOWS = {
     "motion": ("motion-frozen",),
 }
 # Rules that judge a stretch by what lasts in it cannot place its ends to the ping: half their window.
-WINDOWED = {"swath-curl": 26, "swath-wobble": 300}
+WINDOWED = {"swath-wobble": 300}
 
 
 @dataclass
