@@ -146,6 +146,12 @@ def bare(path: Path) -> None:
         assert batch.num_rows
 
 
+def whole_file(path: Path) -> None:
+    """Every column at once, as one would without a thought for memory."""
+    table = pc.read_csv(path) if path.suffix == ".csv" else pq.read_table(path)
+    assert table.num_rows
+
+
 SQL = """
 with pings as (
   select ping, any_value(epoch_us(time)) as time,
@@ -230,6 +236,19 @@ def in_pandas(path: Path) -> list[np.ndarray]:
 ORDER = ("span", "resolution", "along", "across")
 
 
+def reading(path: Path) -> None:
+    """The log taken in and nothing computed: pings cut, every row accounted for, beams streamed once."""
+    from qa.ingest.planning import open_line, plan_logs
+    from qa.model.survey_file import load_survey_file
+
+    survey = load_survey_file(path.with_name("survey.toml"))
+    (task,) = plan_logs([path], survey).lines
+    line = open_line(task, survey)
+    assert len(line.ping_table())
+    for batch in line.beam_batches(["accepted", "beam_angle", "depth"]):
+        assert len(batch.pings)
+
+
 def three_checks(path: Path) -> list[np.ndarray]:
     from qa.engine.evaluate import evaluate_line
     from qa.engine.sheets import load_sheet
@@ -261,6 +280,8 @@ def with_report(path: Path) -> None:
 
 CONTESTANTS: dict[str, Callable[[Path], list[np.ndarray] | None]] = {
     "bare read": bare,
+    "the whole file, pyarrow": whole_file,
+    "the whole file, pingworthy": reading,
     "three checks, pingworthy": three_checks,
     "three checks, DuckDB": in_duckdb,
     "three checks, Polars": in_polars,
@@ -276,9 +297,12 @@ LIBRARIES = {
 }
 
 
+NOT_OURS = (*LIBRARIES, "bare read", "the whole file, pyarrow")
+
+
 def child(name: str, path: Path, out: Path) -> None:
     """Run one contestant and write down its seconds and its numbers."""
-    ours = "three checks, pingworthy", "physics sheet", "physics sheet and report"
+    ours = [contestant for contestant in CONTESTANTS if contestant not in NOT_OURS]
     for module in ("qa.cli", "qa.job") if name in ours else LIBRARIES.get(name, ()):
         imported = import_module(module)
         assert not module.startswith("qa") or Path(imported.__file__ or "").is_relative_to(ROOT)
@@ -341,7 +365,8 @@ def race(path: Path, soundings: int, rounds: int, names: list[str]) -> None:
         ratio = statistics.median(a / b for a, b in zip(seconds[name], base, strict=True))
         pace = soundings / middle / 1e6
         print(f"| {name} | {middle:.2f} | {ratio:.1f} | {pace:.1f} | {memory[name]:.0f} |")
-    agree(numbers)
+    if numbers:
+        agree(numbers)
 
 
 def agree(numbers: dict[str, list[np.ndarray]]) -> None:
