@@ -245,7 +245,7 @@ def reading(path: Path) -> None:
     (task,) = plan_logs([path], survey).lines
     line = open_line(task, survey)
     assert len(line.ping_table())
-    for batch in line.beam_batches(["accepted", "beam_angle", "depth"]):
+    for batch in line.beam_batches(sorted(line.beam_columns)):
         assert len(batch.pings)
 
 
