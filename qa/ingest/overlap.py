@@ -75,21 +75,30 @@ def _shared(
         head = next(_head(later, names), None)
         if head is None or not len(head):
             return nothing
-        wanted = np.unique(_digests(head, names))
+        wanted = np.sort(_digests(head, names))
         if not any(
-            np.isin(_digests(rows, names), wanted).any() for rows in _around(earlier, start, names)
+            _among(_digests(rows, names), wanted).any() for rows in _around(earlier, start, names)
         ):
             return nothing
-        known = [_digests(rows, names) for rows in RowReader(first, names).batches()]
-        seen = np.unique(np.concatenate(known))
+        seen = np.sort(
+            np.concatenate([_digests(rows, names) for rows in RowReader(first, names).batches()])
+        )
         again = [
-            rows.numbers[np.isin(_digests(rows, names), seen)]
+            rows.numbers[_among(_digests(rows, names), seen)]
             for rows in RowReader(second, names).batches()
         ]
     except InputError:
         # what is wrong with a file is said when its line is read
         return nothing
     return np.concatenate([nothing, *again])
+
+
+def _among(values: Digests, ordered: Digests) -> NDArray[np.bool_]:
+    """Which values stand among those of another array, which is sorted once and searched for every batch."""
+    if not len(ordered):
+        return np.zeros(len(values), dtype=bool)
+    place = np.minimum(np.searchsorted(ordered, values), len(ordered) - 1)
+    return np.asarray(ordered[place] == values)
 
 
 def _digests(rows: Rows, names: Names) -> Digests:
