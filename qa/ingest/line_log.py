@@ -89,6 +89,10 @@ class _Met:
     columns: dict[str, NDArray[np.float64]]
 
 
+class _RowsAlike(Exception):
+    """Rows that follow one another are alike in all that was read of them; the rest must be read too."""
+
+
 class _Places:
     """Row numbers in the file of rows by their place in the stream, kept as stretches without a break."""
 
@@ -99,7 +103,7 @@ class _Places:
 
     def add(self, numbers: Integers) -> None:
         """The next rows of the stream."""
-        starts = np.concatenate([[0], np.flatnonzero(np.diff(numbers) != 1) + 1])
+        starts = np.concatenate([[0], np.flatnonzero(numbers[1:] != numbers[:-1] + 1) + 1])
         self._at.append(starts + self.count)
         self._number.append(numbers[starts])
         self.count += len(numbers)
@@ -117,7 +121,9 @@ class _Places:
         at = np.concatenate(self._at)
         low, high = np.searchsorted(at, [start, stop])
         first = np.concatenate(self._number)[low:high]
-        return first, first + np.diff(np.append(at[low:high], stop)) - 1
+        last = first + np.diff(np.append(at[low:high], stop)) - 1
+        breaks = first[1:] != last[:-1] + 1
+        return first[np.append(True, breaks)], last[np.append(breaks, True)]
 
 
 class OpenedLine:
@@ -183,7 +189,10 @@ class OpenedLine:
         held: list[dict[str, NDArray[Any]]] = []
         held_rows, passed = 0, 0
         total = int(ends[-1])
-        for part in self._spill.batches(names):
+        # Pings of one size come whole if they are read so many at a time.
+        width = int(self._counts[0])
+        width = width if 0 < width <= rows and (self._counts == width).all() else 1
+        for part in self._spill.batches(names, max(rows, 1) // width * width):
             held.append(part)
             held_rows += len(part[names[0]])
             while held_rows >= rows or passed + held_rows == total:
@@ -225,14 +234,28 @@ class OpenedLine:
     # Reading
 
     def _read(self) -> PingTable:
+        twice = self._reads_twice()
+        if twice:
+            try:
+                return self._read_with(None, unread=frozenset(self._stored) - {"beam"})
+            except _RowsAlike:
+                self._start_again()
+        return self._read_with(None if twice else Spill())
+
+    def _start_again(self) -> None:
+        self._readers, self._places = [], _Places()
+        self._beams_ordered, self._last_beam = True, None
+
+    def _read_with(self, aside: Spill | None, unread: frozenset[str] = frozenset()) -> PingTable:
+        """Read the line once, its beams put ``aside`` or to be read again; columns of ``unread`` only where one must."""
         names = Names()
         runs = _Runs([], [], [], [], [], [], [], [])
         present: dict[str, bool] = {}
-        aside = None if self._reads_twice() else Spill()
         read: list[ReadBefore] = []
         for at, part in enumerate(self._parts):
             start = self._places.count
-            reader = RowReader(part.probe, names, stretch=part.stretch)
+            wanted = part.probe.roles - {"line"}
+            reader = RowReader(part.probe, names, wanted, part.stretch, lazy=True, unread=unread)
             self._readers.append(reader)
             if part.met is not None:
                 count = sum(last - first + 1 for first, last in part.met.spans)
@@ -304,7 +327,7 @@ class OpenedLine:
         self, rows: Rows, last: dict[str, Any] | None, reader: RowReader
     ) -> tuple[Rows, dict[str, Any] | None]:
         """A beam's row that stands twice in a row counts once; pings are looked at when all are known."""
-        if self._grain != "beam" or (rows.counts != 1).any():
+        if self._grain != "beam" or (not rows.one_each and (rows.counts != 1).any()):
             return rows, None
         # What differs soonest comes first: the beam's number from row to row.
         beam = {"beam": rows.beams["beam"]} if "beam" in rows.beams else {}
@@ -315,21 +338,32 @@ class OpenedLine:
                 now[key] = values
         if "beam" not in now and rows.ping is None:
             return rows, None
+
+        def ends(place: int) -> dict[str, Any]:
+            return {
+                key: rows.proof.settled(key, values[[place]])[0]
+                if key in rows.proof.roles and key != "ping"
+                else values[place]
+                for key, values in now.items()
+            }
+
         same = np.ones(len(rows), dtype=bool)
-        for key, values in now.items():
-            before = np.concatenate(
-                [[values[0] if last is None or key not in last else last[key]], values[:-1]]
-            )
-            equal = values == before
+        first = ends(0)
+        same[0] = last is not None and all(
+            key not in last or value == last[key] or (value != value and last[key] != last[key])
+            for key, value in first.items()
+        )
+        for values in now.values():
+            equal = values[1:] == values[:-1]
             if values.dtype.kind == "f":
-                equal |= np.isnan(values) & np.isnan(before)
-            same &= equal
+                equal |= np.isnan(values[1:]) & np.isnan(values[:-1])
+            same[1:] &= equal
             if not same.any():
                 break
-        if last is None:
-            same[0] = False
-        following = {key: values[-1] for key, values in now.items()}
+        following = ends(-1)
         if same.any():
+            if rows.proof.unread:
+                raise _RowsAlike
             reader.reject_all(rows.numbers[same], "the row before again")
             rows = rows.take(~same)
         return rows, following
@@ -369,15 +403,17 @@ class OpenedLine:
         beam = rows.beams.get("beam")
         if beam is None or not len(beam):
             return
-        falls = np.zeros(len(beam), dtype=bool)
-        falls[1:] = beam[1:] < beam[:-1]
+        falls = beam[1:] < beam[:-1]
         # a ping's first beam may well be lower than the last of the ping before
-        first = np.cumsum(rows.counts) - rows.counts
-        falls[first[starts & (first < len(beam))]] = False
-        if continues and self._last_beam is not None:
-            falls[0] = beam[0] < self._last_beam
+        if rows.one_each:
+            falls &= ~starts[1:]
+        else:
+            first = np.cumsum(rows.counts) - rows.counts
+            inside = first[starts & (first < len(beam)) & (first > 0)]
+            falls[inside - 1] = False
+        fell = continues and self._last_beam is not None and bool(beam[0] < self._last_beam)
         self._last_beam = beam[-1]
-        if self._beams_ordered and falls.any():
+        if self._beams_ordered and (fell or falls.any()):
             self._beams_ordered = False
 
     def _keep(
@@ -385,11 +421,12 @@ class OpenedLine:
     ) -> None:
         first = np.flatnonzero(starts)
         lengths = np.diff(np.append(first, len(rows)))
-        beams = np.add.reduceat(rows.counts, first)
+        beams = lengths.copy() if rows.one_each else np.add.reduceat(rows.counts, first)
         hold = self.survey.columns.hold
         columns = {}
         for name, values in rows.pings.items():
-            columns[name] = _first_known(values, first, lengths) if name in hold else values[first]
+            found = _first_known(values, first, lengths) if name in hold else values[first]
+            columns[name] = rows.proof.settled(name, found)
         if continues:
             runs.counts[-1][-1] += beams[0]
             runs.rows[-1][-1] += lengths[0]
@@ -417,7 +454,9 @@ class OpenedLine:
         if aside is None:
             for name in stored:
                 values = rows.beams.get(name)
-                if values is not None and not present.get(name, False):
+                if name in rows.proof.unread:
+                    present[name] = True
+                elif values is not None and not present.get(name, False):
                     present[name] = name == "accepted" or not bool(np.isnan(values).all())
             return
         total = int(rows.counts.sum())
@@ -432,7 +471,7 @@ class OpenedLine:
                 values = np.asarray(values).astype(bool)
                 present[name] = True
             else:
-                values = np.asarray(values, dtype=np.float64)
+                values = rows.proof.settled(name, values)
                 present[name] = present.get(name, False) or not bool(np.isnan(values).all())
             columns[name] = values
         aside.append(columns)
@@ -901,7 +940,7 @@ def _beam_roles(probe: FileProbe) -> set[str]:
 
 
 def _beam_number(rows: Rows) -> NDArray[Any] | None:
-    return rows.beams.get("beam") if (rows.counts == 1).all() else None
+    return rows.beams.get("beam") if rows.one_each or (rows.counts == 1).all() else None
 
 
 def _first_known(

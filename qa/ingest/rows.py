@@ -13,8 +13,9 @@ from numpy.typing import NDArray
 
 from qa.ingest.names import Binding
 from qa.ingest.probe import SIDES, FileProbe
+from qa.ingest.proofs import NO_PROOF, Proof, counts_of, is_proven, proven
 from qa.ingest.table_source import TableSource
-from qa.ingest.text_source import RawBatch, TextSource
+from qa.ingest.text_source import RawBatch
 from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
 from qa.ingest.values import (
     Converted,
@@ -38,7 +39,8 @@ class Rows:
     """Canonical rows of one batch, rejected ones taken out.
 
     ``numbers`` are the rows' numbers in the file. ``beams`` holds the beam columns, ``counts`` how many of their
-    values each row owns: one each in a log whose rows are pings or beams. NaN, or -1 for ``ping``, is missing.
+    values each row owns: one each, ``one_each``, in a log whose rows are pings or beams. NaN, or -1 for ``ping``, is
+    missing. Columns that ``proof`` covers are as they are in the file: :meth:`qa.ingest.proofs.Proof.settled`.
     """
 
     numbers: Integers
@@ -49,6 +51,8 @@ class Rows:
     pings: dict[str, NDArray[np.float64]]
     beams: dict[str, NDArray[Any]]
     counts: Integers
+    one_each: bool = False
+    proof: Proof = NO_PROOF
 
     def __len__(self) -> int:
         return len(self.numbers)
@@ -57,7 +61,7 @@ class Rows:
         """Some of the rows, by mask."""
         if kept.all():
             return self
-        owned = np.repeat(kept, self.counts)
+        owned = kept if self.one_each else np.repeat(kept, self.counts)
 
         def picked(values: Integers | None) -> Integers | None:
             return None if values is None else values[kept]
@@ -71,6 +75,8 @@ class Rows:
             {k: v[kept] for k, v in self.pings.items()},
             {k: v[owned] for k, v in self.beams.items()},
             self.counts[kept],
+            self.one_each,
+            self.proof,
         )
 
 
@@ -99,9 +105,20 @@ class Stretch:
         at = np.searchsorted(firsts, numbers, side="right") - 1
         return np.asarray((at >= 0) & (numbers <= lasts[np.maximum(at, 0)]))
 
+    def holds_all(self, raw: RawBatch) -> bool:
+        """Whether every row of a batch is within one span, and none of them is broken."""
+        if not raw.length or raw.broken:
+            return False
+        start, end = raw.rows[[0, -1]].tolist()
+        return any(first <= start and end <= last for first, last in self.spans)
+
 
 class RowReader:
-    """Reads one file, or a stretch of it, as canonical rows, keeping its account."""
+    """Reads one file, or a stretch of it, as canonical rows, keeping its account.
+
+    With ``lazy``, cells of which a Parquet file's statistics prove that none is missing or impossible are left as they
+    are, and columns of ``unread`` that are proven so are not read at all.
+    """
 
     def __init__(
         self,
@@ -109,8 +126,11 @@ class RowReader:
         names: Names,
         wanted: frozenset[str] | None = None,
         stretch: Stretch | None = None,
+        lazy: bool = False,
+        unread: frozenset[str] = frozenset(),
     ) -> None:
         self.probe, self.names, self.stretch = probe, names, stretch
+        self._lazy, self._unread = lazy, unread
         self.account = FileAccount(probe.shown, notes=list(probe.notes))
         self.state = TimeState()
         self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
@@ -121,8 +141,8 @@ class RowReader:
 
     def batches(self) -> Iterator[Rows]:
         """The file's rows, batch after batch, in file order."""
-        for raw in self._raw():
-            yield self.convert(raw)
+        for raw, proof in self._raw():
+            yield self.convert(raw, proof)
         if self.state.leap_seconds:
             self.account.notes.append(
                 f"{self.state.leap_seconds} times lie in a leap second (second 60): taken as that far into the next minute."
@@ -137,34 +157,64 @@ class RowReader:
             sources[side.source] = pa.string()
         return sources
 
-    def _raw(self) -> Iterator[RawBatch]:
+    def _raw(self) -> Iterator[tuple[RawBatch, Proof]]:
         sources = self.kinds()
         opened = self.probe.open()
         if isinstance(opened, TableSource):
             try:
-                for _, raw in opened.batches(list(sources), groups=self._groups(opened)):
-                    yield raw
+                groups = self._groups(opened)
+                for group in range(len(opened.groups)) if groups is None else groups:
+                    yield from self._part(opened, group, list(sources))
             finally:
                 opened.close()
-        elif self.stretch is None or self.probe.times.rolls_over:
-            yield from opened.batches(sources)
+            return
+        if self.stretch is None or self.probe.times.rolls_over:
+            batches = opened.batches(sources)
         else:
-            yield from opened.batches(
+            batches = opened.batches(
                 sources, start=self.stretch.start, last=self.stretch.spans[-1][1]
             )
-        if isinstance(opened, TextSource) and opened.seekable:
+        for raw in batches:
+            yield raw, NO_PROOF
+        if opened.seekable:
             self.starts = opened.starts
 
-    def beams(self) -> Iterator[tuple[Integers, dict[str, NDArray[Any]]]]:
-        """Beam columns and their rows' numbers, without a look at times or at what is to be rejected."""
+    def _part(
+        self, opened: TableSource, group: int, sources: list[str]
+    ) -> Iterator[tuple[RawBatch, Proof]]:
+        """One part of a Parquet or Arrow file."""
+        if not self._lazy or opened.kind != "parquet" or opened.nested:
+            for _, raw in opened.batches(sources, groups=[group]):
+                yield raw, NO_PROOF
+            return
+        unread = [b for b in self.bindings if b.role in self._unread]
+        if unread:
+            opened.try_out([b.source for b in unread], group)
+            unread = [b for b in unread if is_proven(b, self.probe, opened, group)]
+        sources = [name for name in sources if name not in {b.source for b in unread}]
+        proof: Proof | None = None
+        for _, raw in opened.batches(sources, groups=[group]):
+            if proof is None:
+                proof = proven(self.probe, opened, group, frozenset(b.role for b in unread))
+            yield raw, proof
+
+    def beams(
+        self, size: int
+    ) -> Iterator[tuple[Integers, dict[str, NDArray[Any]], NDArray[np.bool_] | None]]:
+        """Beam columns, the numbers of their rows, and which rows' beams are to be rejected, if any; times are not read."""
         opened = self.probe.open()
         assert isinstance(opened, TableSource)
         sources = [b.source for b in self.bindings]
         try:
             with np.errstate(over="ignore", invalid="ignore"):
-                for _, raw in opened.batches(sources, groups=self._groups(opened)):
+                for _, raw in opened.batches(sources, size, self._groups(opened)):
                     if raw.length:
-                        yield raw.rows, self._converted(raw, raw.rows, []).beams
+                        reasons: list[tuple[NDArray[np.bool_], str]] = []
+                        beams = self._converted(raw, raw.rows, reasons).beams
+                        bad = (
+                            np.logical_or.reduce([mask for mask, _ in reasons]) if reasons else None
+                        )
+                        yield raw.rows, beams, bad
         finally:
             opened.close()
 
@@ -193,28 +243,34 @@ class RowReader:
         return pa.float64() if column.kind == "number" else pa.string()
 
     @np.errstate(over="ignore", invalid="ignore")
-    def convert(self, raw: RawBatch) -> Rows:
+    def convert(self, raw: RawBatch, proof: Proof = NO_PROOF) -> Rows:
         """A batch of the file as canonical rows; what is rejected goes into the account."""
         account = self.account
-        time, bad_time = convert_times(self.probe.times, dict(raw.columns), self.state)
-        if self.stretch is not None:
+        reasons: list[tuple[NDArray[np.bool_], str]] = []
+        bad_time: NDArray[np.bool_] | None = None
+        if proof.time is None:
+            time, bad = convert_times(self.probe.times, dict(raw.columns), self.state)
+            if (
+                bad.any()
+                or time.min(initial=LATEST) < EARLIEST
+                or time.max(initial=EARLIEST) > LATEST
+            ):
+                bad_time = bad
+        else:
+            time = proof.time(counts_of(raw.columns[self.probe.times.sources[0]]))
+        if self.stretch is not None and not self.stretch.holds_all(raw):
             mine = self.stretch.holds(raw.rows)
             raw = _part_of(raw, mine, self.stretch)
-            time, bad_time = time[mine], bad_time[mine]
+            time, bad_time = time[mine], None if bad_time is None else bad_time[mine]
         n = raw.length
         account.rows_read += n + len(raw.broken)
         for number, reason, text in raw.broken:
             self._reject(number, reason, text)
-        reasons: list[tuple[NDArray[np.bool_], str]] = []
-        reasons.append((bad_time, "the time cannot be read"))
-        missing = (time == NO_TIME) & ~bad_time
-        reasons.append((missing, "no time"))
-        known = ~missing & ~bad_time
-        reasons.append(
-            (known & (time < EARLIEST), "the time is before 1990: the clock was not set")
-        )
-        reasons.append((known & (time > LATEST), "the time is after 2100"))
-        rows = self._converted(raw, time, reasons)
+        if bad_time is not None:
+            reasons += _unusable(time, bad_time)
+        rows = self._converted(raw, time, reasons, proof)
+        if not reasons:
+            return self._met(rows)
         rejected = np.zeros(n, dtype=bool)
         for mask, reason in reasons:
             fresh = mask & ~rejected
@@ -229,7 +285,9 @@ class RowReader:
                 if left:
                     account.reasons[reason] = account.reasons.get(reason, 0) + left
                 rejected |= fresh
-        rows = rows.take(~rejected)
+        return self._met(rows.take(~rejected))
+
+    def _met(self, rows: Rows) -> Rows:
         if len(rows):
             self._latest = max(self._latest, int(rows.time.max()))
         return rows
@@ -276,19 +334,30 @@ class RowReader:
             account.rejected_rows.append(RejectedRow(self.probe.shown, number, reason, text))
 
     def _converted(
-        self, raw: RawBatch, time: Integers, reasons: list[tuple[NDArray[np.bool_], str]]
+        self,
+        raw: RawBatch,
+        time: Integers,
+        reasons: list[tuple[NDArray[np.bool_], str]],
+        proof: Proof = NO_PROOF,
     ) -> Rows:
         n = raw.length
         pings: dict[str, NDArray[np.float64]] = {}
         flat: dict[str, NDArray[Any]] = {}
         codes: dict[str, Integers | None] = {"ping": None, "line": None, "channel": None}
-        counts = np.ones(n, dtype=np.int64)
+        counts: Integers = np.ones(n, dtype=np.int64)
         lists: dict[str, tuple[Binding, pa.Array]] = {}
         wide: dict[str, dict[int, Converted]] = {}
         for binding in self.bindings:
-            array = raw.columns[binding.source]
             role = binding.role
-            if role in NAMES:
+            if binding.source not in raw.columns:
+                continue
+            array = raw.columns[binding.source]
+            if role in proof.roles and role == "ping":
+                codes[role] = counts_of(array)
+            elif role in proof.roles:
+                grain = pings if COLUMNS[role].grain == "ping" else flat
+                grain[role] = array.to_numpy()
+            elif role in NAMES:
                 codes[role] = getattr(self.names, role).encode(_plain_text(array))
             elif role == "ping":
                 codes[role] = self._whole(binding, array, reasons)
@@ -326,9 +395,18 @@ class RowReader:
             )
             turned = np.asarray(pc.fill_null(pc.starts_with(letters, negative), False))
             pings[role] = np.where(turned, -np.abs(pings[role]), pings[role])
-        self._no_fix(pings)
+        self._no_fix(pings, proof)
         return Rows(
-            raw.rows, time, codes["ping"], codes["line"], codes["channel"], pings, flat, counts
+            raw.rows,
+            time,
+            codes["ping"],
+            codes["line"],
+            codes["channel"],
+            pings,
+            flat,
+            counts,
+            not (wide or lists),
+            proof,
         )
 
     def _lists(
@@ -408,10 +486,10 @@ class RowReader:
         if found.emptied:
             self.account.missing[role] = self.account.missing.get(role, 0) + found.emptied
 
-    def _no_fix(self, pings: dict[str, NDArray[np.float64]]) -> None:
+    def _no_fix(self, pings: dict[str, NDArray[np.float64]], proof: Proof) -> None:
         """A position of 0,0 is where no fix was."""
         for first, second in (("latitude", "longitude"), ("easting", "northing")):
-            if first in pings and second in pings:
+            if first in pings and second in pings and not proof.roles & {first, second}:
                 none = (pings[first] == 0.0) & (pings[second] == 0.0)
                 if none.any():
                     for role in (first, second):
@@ -420,6 +498,18 @@ class RowReader:
                     self.account.missing["position"] = (
                         self.account.missing.get("position", 0) + count
                     )
+
+
+def _unusable(time: Integers, bad: NDArray[np.bool_]) -> list[tuple[NDArray[np.bool_], str]]:
+    """Rows whose time is of no use, and why."""
+    missing = (time == NO_TIME) & ~bad
+    known = ~missing & ~bad
+    return [
+        (bad, "the time cannot be read"),
+        (missing, "no time"),
+        (known & (time < EARLIEST), "the time is before 1990: the clock was not set"),
+        (known & (time > LATEST), "the time is after 2100"),
+    ]
 
 
 def _part_of(raw: RawBatch, mine: NDArray[np.bool_], stretch: Stretch) -> RawBatch:

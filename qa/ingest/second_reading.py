@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Stretch
+from qa.model.errors import InputError
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,12 +43,27 @@ class SecondReading:
     def __init__(self, files: Sequence[ReadBefore]) -> None:
         self._files = tuple(files)
 
-    def batches(self, names: Sequence[str]) -> Iterator[dict[str, NDArray[Any]]]:
-        """The named beam columns, batch after batch; NaN, or accepted, where a file has none."""
+    def batches(
+        self, names: Sequence[str], size: int = 1 << 17
+    ) -> Iterator[dict[str, NDArray[Any]]]:
+        """The named beam columns, batch after batch of up to ``size`` rows; NaN, or accepted, where a file has none.
+
+        Raises
+        ------
+        InputError
+            If a file holds what its own statistics rule out.
+        """
         for file in self._files:
             reader = RowReader(file.probe, Names(), frozenset(names), file.stretch)
-            for numbers, columns in reader.beams():
+            for numbers, columns, bad in reader.beams(size):
                 kept = file.kept(numbers)
+                if bad is not None and (bad if kept is None else bad & kept).any():
+                    raise InputError(
+                        "The file is damaged: it holds beams that its own statistics rule out.",
+                        where=file.probe.shown,
+                        found=f"rows {numbers[0]} to {numbers[-1]}",
+                        advice="Copy or export it again.",
+                    )
                 count = len(numbers) if kept is None else int(kept.sum())
                 if not count:
                     continue

@@ -73,8 +73,8 @@ class Spill:
             self._mapped = pa.OSFile(str(Path(self._folder) / "beams.arrow"), "rb")
             self._reader = pa.ipc.open_file(self._mapped)
 
-    def batches(self, names: Sequence[str]) -> Iterator[dict[str, NDArray[Any]]]:
-        """The named columns, batch after batch."""
+    def batches(self, names: Sequence[str], size: int = 0) -> Iterator[dict[str, NDArray[Any]]]:
+        """The named columns, batch after batch as they were put aside, whatever the ``size`` that is wished for."""
         if self._reader is None:
             batches: Iterator[pa.RecordBatch] = iter(self._kept)
         else:

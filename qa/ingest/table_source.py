@@ -159,19 +159,33 @@ class TableSource:
         """Columns that hold a list in each row."""
         return [p for p, f in self.fields.items() if _is_list(f.type)]
 
-    def bounds(self, name: str, group: int) -> tuple[float, float] | None:
-        """Least and greatest of a numeric column in a row group, where the file tells."""
+    def extremes(self, name: str, group: int) -> tuple[float, float] | None:
+        """Least and greatest of a column of numbers or times in a part of which its statistics say that no cell is empty.
+
+        Times are given as counts. None where the statistics do not say. A cell that is no number (NaN) may be there.
+        The column must have been read from before: statistics that are damaged are refused there, and end the process
+        here.
+        """
         if self.kind != "parquet" or self.nested:
             return None
         try:
             place = self.schema.names.index(name)
             column = self._file.metadata.row_group(group).column(place)
             statistics = column.statistics
-            if statistics is None or not statistics.has_min_max or column.path_in_schema != name:
+            if statistics is None or column.path_in_schema != name:
                 return None
-            return float(statistics.min), float(statistics.max)
+            if not statistics.has_min_max or not statistics.has_null_count or statistics.null_count:
+                return None
+            if pa.types.is_timestamp(self.schema.field(place).type):
+                return int(statistics.min_raw), int(statistics.max_raw)
+            return statistics.min, statistics.max
         except (ValueError, TypeError, IndexError, pa.ArrowException):
             return None
+
+    def try_out(self, names: Sequence[str], group: int) -> None:
+        """Read one row of some columns of a part, so that damage shows as an error."""
+        for _ in self.batches(names, 1, [group]):
+            return
 
     def batches(
         self, names: Sequence[str], size: int = 1 << 17, groups: Sequence[int] | None = None
