@@ -76,6 +76,13 @@ def held_to_threads(count: int) -> Iterator[None]:
         pa.set_io_thread_count(before[1])
 
 
+def threads_here() -> int:
+    """Threads that this process may have at work at once."""
+    import pyarrow as pa
+
+    return int(pa.cpu_count())
+
+
 def share_of_threads(budget: int, tasks: int) -> tuple[int, int]:
     """Processes, and threads in each, that a budget of threads makes for some tasks.
 

@@ -30,6 +30,7 @@ from qa.executors import (
     held_to_threads,
     run_tasks,
     share_of_threads,
+    threads_here,
 )
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.ingest.casts import read_cast
@@ -279,8 +280,15 @@ def run_line(job: LineJob) -> LineOutcome:
         survey = log.survey
         if not len(log.ping_table()):
             return _without_pings(job, log.accounts())
+        # A user's own functions are not asked to stand being run by several threads at once.
+        threads = 1 if job.sheet.python else threads_here()
         result = evaluate_line(
-            log, survey, job.sheet.load(survey), job.task.files, cast=cast_of(survey)
+            log,
+            survey,
+            job.sheet.load(survey),
+            job.task.files,
+            cast=cast_of(survey),
+            threads=threads,
         )
     except PingworthyError as error:
         return _failed(job, str(error), str(error))

@@ -55,6 +55,7 @@ def evaluate_line(
     rows: int = BATCH_ROWS,
     cast: Cast | None = None,
     sections: bool = True,
+    threads: int = 1,
 ) -> LineResult:
     """Everything about one line.
 
@@ -74,6 +75,9 @@ def evaluate_line(
         Speed of sound down the water, as the survey file's profile says it.
     sections : bool
         Whether to make sections, with their texts; without them misses are only counted.
+    threads : int
+        Threads that work on batches of beams; no result depends on it. More than one only where every recipe can be
+        run by several at once, as the program's own can.
     """
     table = log.ping_table()
     kind, assumed_kind = line_kind(log, survey)
@@ -99,7 +103,7 @@ def evaluate_line(
             spans.append(ChannelSpan(channel.name, at, at + length))
             at += length
         runs.append(LineRun(make_plan(sheet, available, EXTRA), table, rows_of, tuple(spans)))
-    done = run_stages(log, runs, rows)
+    done = run_stages(log, runs, rows, threads)
     return _Assembly(log.name, kind, table, sheet, done, tuple(files)).result(sections)
 
 

@@ -50,6 +50,8 @@ class Groups:
 
     def full(self, values: Any) -> NDArray[Any]:
         """Values in the batch's full shape, without a copy."""
+        if np.shape(values) == self.shape:
+            return np.asarray(values)
         return np.broadcast_to(values, self.shape)
 
     @property
@@ -63,9 +65,17 @@ class Groups:
 
     def at(self, values: Any, beams: NDArray[np.int64]) -> NDArray[Any]:
         """Values at some beams, counted after one another."""
+        return np.asarray(self.full(values)[self.places(beams)])
+
+    def places(self, beams: NDArray[np.int64]) -> tuple[NDArray[np.int64], ...]:
+        """Where in an array of the batch's full shape some beams are, counted after one another."""
+        return (beams // self.width, beams % self.width) if self.width else (beams,)
+
+    def owners(self, beams: NDArray[np.int64]) -> NDArray[np.int64]:
+        """Which ping of the batch some beams are of, counted after one another."""
         if self.width:
-            return np.asarray(self.full(values)[beams // self.width, beams % self.width])
-        return np.asarray(self.full(values)[beams])
+            return beams // self.width
+        return np.flatnonzero(self.filled)[np.searchsorted(self.starts, beams, side="right") - 1]
 
     def spread(self, values: Any) -> Any:
         """A value for each ping, for its beams; one number where all are the same."""

@@ -3,36 +3,22 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from qa.engine.beam_rules import Misses, WorstBeams, judge_beams
 from qa.engine.expressions import Judgement, judge
 from qa.engine.plans import Node, Plan, PlannedRule, closure
-from qa.engine.reducers import Groups, nearest_beam, reduce_beams
+from qa.engine.reducers import Groups, reduce_beams
+from qa.engine.side_by_side import in_order
 from qa.model.findings import EXEMPT, MET, MISSED, NOT_ASSESSED, BeamMisses, RuleSeries
 from qa.model.log import BeamBatch, ChannelSpan, Floats, LineLog, PingTable
 
 BATCH_ROWS = 100_000
-MOST_BEAM_MISSES = 4000
 MOST_EVIDENCE = 8
-
-
-@dataclass(slots=True)
-class WorstBeams:
-    """For each ping, what one beam rule came to: counts, and the beam that is nearest to failing."""
-
-    assessed: NDArray[np.int64]
-    missed: NDArray[np.int64]
-    margin: Floats
-    value: Floats
-    limit: Floats
-    inputs: dict[str, Floats]
-    misses: list[tuple[NDArray[np.int64], Floats]] = field(default_factory=list)
-    kept: int = 0
-    total: int = 0
 
 
 @dataclass(slots=True)
@@ -65,6 +51,7 @@ class LineRun:
         self.n = len(rows)
         self.position = np.full(len(table), -1, dtype=np.int64)
         self.position[rows] = np.arange(self.n)
+        self.soundings = np.zeros(self.n, dtype=np.int64)
         self.whole = self.n == len(table)
         self.beam_rules = [p for p in plan.rules if p.beam and p.applies and not p.missing]
         values = self.computed.values
@@ -88,13 +75,7 @@ class LineRun:
         if "angle_from_vertical" in nodes and "angle_from_vertical" not in wanted:
             wanted.append("angle_from_vertical")
 
-        def blank() -> Floats:
-            return np.full(self.n, np.nan)
-
-        count = np.zeros(self.n, dtype=np.int64)
-        return WorstBeams(
-            count, count.copy(), blank(), blank(), blank(), {k: blank() for k in wanted}
-        )
+        return WorstBeams.none(self.n, wanted)
 
     def _constant(self, node: Node) -> Any:
         if node.value is not None:
@@ -131,16 +112,23 @@ class LineRun:
             found[rows] = by_recipe(node, here)
         return found
 
-    def take(self, batch: BeamBatch) -> None:
-        """Stage 2: one batch of beams, whole pings of any channel."""
+    def take(self, batch: BeamBatch) -> dict[str, Misses]:
+        """Stage 2: one batch of beams, whole pings of any channel. Returns the beams that missed, by rule.
+
+        Batches may be taken by several threads at once: each writes to its own pings.
+        """
         pings = self.position[batch.pings]
         mine = pings >= 0
         if mine.all():
-            self._beams(pings, batch.counts, batch.columns)
-        elif mine.any():
-            rows = np.repeat(mine, batch.counts)
-            columns = {k: v[rows] for k, v in batch.columns.items()}
-            self._beams(pings[mine], batch.counts[mine], columns)
+            return self._beams(pings, batch.counts, batch.columns)
+        rows = np.repeat(mine, batch.counts)
+        columns = {k: v[rows] for k, v in batch.columns.items()}
+        return self._beams(pings[mine], batch.counts[mine], columns) if mine.any() else {}
+
+    def add(self, misses: Mapping[str, Misses]) -> None:
+        """The beams of the next batch that missed a rule."""
+        for rule, found in misses.items():
+            self.computed.worst_beams[rule].add(found)
 
     def make_beams(self, rows: int = BATCH_ROWS) -> None:
         """Stage 2 of a side-scan: two beams a ping, at the near and at the farthest range."""
@@ -149,13 +137,13 @@ class LineRun:
         for start in range(0, self.n, rows // 2):
             pings = np.arange(start, min(start + rows // 2, self.n))
             made = np.column_stack([near[pings], far[pings]]).ravel()
-            self._beams(pings, np.full(len(pings), 2), {"slant_range": made})
+            self.add(self._beams(pings, np.full(len(pings), 2), {"slant_range": made}))
 
     def _beams(
         self, pings: NDArray[np.int64], counts: NDArray[np.int64], columns: Mapping[str, Any]
-    ) -> None:
+    ) -> dict[str, Misses]:
         groups = Groups.of(counts)
-        self.computed.soundings += int(counts.sum())
+        self.soundings[pings] = counts
         values = _BeamValues(self.computed.values, pings, groups)
         nodes = self.plan.nodes
         accepted: NDArray[np.bool_] | None = None
@@ -178,8 +166,11 @@ class LineRun:
                 else:
                     values[key] = by_recipe(node, values, groups)
             accepted = accepted if asked else self._accepted(values)
-            for planned in self.beam_rules:
-                self._judge_beams(planned, values, groups, pings, accepted)
+            found = (
+                (planned.rule.id, self._judge_beams(planned, values, groups, pings, accepted))
+                for planned in self.beam_rules
+            )
+            return {rule: misses for rule, misses in found if misses is not None}
 
     def _ping_in_batch(self, node: Node, pings: NDArray[np.int64]) -> Any:
         """A ping's value that rests on reductions, for the pings of a batch."""
@@ -226,51 +217,19 @@ class LineRun:
         groups: Groups,
         pings: NDArray[np.int64],
         accepted: NDArray[np.bool_] | None,
-    ) -> None:
+    ) -> Misses | None:
         assert planned.rule.requirement is not None
-        judged = judge(planned.rule.requirement, values)
-        known = np.asarray(judged.known)
-        if accepted is not None:
-            known = known & accepted
-        missed = known & ~np.asarray(judged.met)
-        kept = self.computed.worst_beams[planned.rule.id]
-        kept.assessed[pings] = groups.counted(known)
-        kept.missed[pings] = groups.counted(missed)
-        worst = nearest_beam(np.where(known, 0.0, np.nan), groups, judged.margin)
-        found = worst >= 0
-        rows_of, into = worst[found], pings[found]
-        kept.margin[into] = groups.at(judged.margin, rows_of)
-        kept.value[into] = groups.at(judged.value, rows_of)
-        kept.limit[into] = groups.at(judged.limit, rows_of)
-        for key, into_values in kept.inputs.items():
-            into_values[into] = groups.at(values[key], rows_of)
-        self._keep_misses(kept, missed, values, groups, pings)
-
-    def _keep_misses(
-        self,
-        kept: WorstBeams,
-        missed: NDArray[np.bool_],
-        values: _BeamValues,
-        groups: Groups,
-        pings: NDArray[np.int64],
-    ) -> None:
-        if not missed.any():
-            return
-        rows = np.flatnonzero(groups.full(missed))
-        kept.total += len(rows)
-        if "angle_from_vertical" not in self.plan.nodes:
-            return
-        if self.plan.nodes["angle_from_vertical"].grain != "beam":
-            return
-        kept.kept += len(rows)
-        owner = np.repeat(pings, groups.counts)[rows]
-        kept.misses.append((owner, groups.at(values["angle_from_vertical"], rows)))
-        if kept.kept > 4 * MOST_BEAM_MISSES:
-            _thin(kept)
+        found = judge_beams(planned.rule.requirement, values, groups, accepted)
+        self.computed.worst_beams[planned.rule.id].put(pings, found, values, groups)
+        angle = self.plan.nodes.get("angle_from_vertical")
+        if angle is None or angle.grain != "beam" or not len(found.missing):
+            return None
+        return Misses(found.missing, pings, groups, values["angle_from_vertical"])
 
     def finish(self) -> Computed:
         """Stage 3: what needs a whole line of pings, reduced values included."""
         values = self.computed.values
+        self.computed.soundings = int(self.soundings.sum())
         for key in self.plan.last_pings:
             values[key] = self._ping(self.plan.nodes[key])
         return self.computed
@@ -308,26 +267,18 @@ def by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = Non
     return recipe.function(**given)
 
 
-def _thin(kept: WorstBeams) -> None:
-    owner = np.concatenate([o for o, _ in kept.misses])
-    angle = np.concatenate([a for _, a in kept.misses])
-    step = -(-len(owner) // MOST_BEAM_MISSES)
-    kept.misses = [(owner[::step], angle[::step])]
-    kept.kept = len(kept.misses[0][0])
-
-
 def beam_misses(computed: Computed) -> Iterator[BeamMisses]:
     """The beams that missed a rule, thinned, at their pings' positions in the line's table."""
     for rule, kept in computed.worst_beams.items():
         if kept.misses:
-            if kept.kept > MOST_BEAM_MISSES:
-                _thin(kept)
-            owner = np.concatenate([o for o, _ in kept.misses])
-            angle = np.concatenate([a for _, a in kept.misses])
+            kept.thin()
+            owner, angle = (np.concatenate(each) for each in zip(*kept.misses, strict=True))
             yield BeamMisses(rule, computed.rows[owner], angle, kept.total)
 
 
-def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> list[Computed]:
+def run_stages(
+    log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS, threads: int = 1
+) -> list[Computed]:
     """Take a line through the stages.
 
     Parameters
@@ -337,6 +288,8 @@ def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> lis
         One for each group of channels that share a plan.
     rows : int
         Beams a batch holds, about.
+    threads : int
+        Threads that work on batches.
     """
     columns = frozenset().union(*(r.plan.beam_columns for r in runs))
     reading = [r for r in runs if not r.plan.available.makes_beams]
@@ -344,9 +297,10 @@ def run_stages(log: LineLog, runs: list[LineRun], rows: int = BATCH_ROWS) -> lis
         if run.plan.available.makes_beams and "slant_range" in run.plan.batch:
             run.make_beams(rows)
     if log.beam_columns and (reading or log.grain == "beam"):
-        for batch in log.beam_batches(sorted(columns), rows):
-            for run in reading:
-                run.take(batch)
+        batches = log.beam_batches(sorted(columns), rows)
+        for found in in_order(batches, lambda batch: [r.take(batch) for r in reading], threads):
+            for run, misses in zip(reading, found, strict=True):
+                run.add(misses)
     return [run.finish() for run in runs]
 
 

@@ -102,8 +102,10 @@ class _Places:
         self.count = 0
 
     def add(self, numbers: Integers) -> None:
-        """The next rows of the stream."""
-        starts = np.concatenate([[0], np.flatnonzero(numbers[1:] != numbers[:-1] + 1) + 1])
+        """The next rows of the stream, their numbers rising."""
+        starts = np.zeros(1, dtype=np.int64)
+        if numbers[-1] - numbers[0] != len(numbers) - 1:
+            starts = np.append(starts, np.flatnonzero(np.diff(numbers) != 1) + 1)
         self._at.append(starts + self.count)
         self._number.append(numbers[starts])
         self.count += len(numbers)
@@ -347,23 +349,24 @@ class OpenedLine:
                 for key, values in now.items()
             }
 
-        same = np.ones(len(rows), dtype=bool)
-        first = ends(0)
-        same[0] = last is not None and all(
+        first = last is not None and all(
             key not in last or value == last[key] or (value != value and last[key] != last[key])
-            for key, value in first.items()
+            for key, value in ends(0).items()
         )
+        following = ends(-1)
+        alike: NDArray[np.bool_] | None = None
         for values in now.values():
             equal = values[1:] == values[:-1]
-            if values.dtype.kind == "f":
+            if values.dtype.kind == "f" and not equal.all():
                 equal |= np.isnan(values[1:]) & np.isnan(values[:-1])
-            same[1:] &= equal
-            if not same.any():
+            alike = equal if alike is None else alike & equal
+            if not alike.any():
                 break
-        following = ends(-1)
-        if same.any():
+        assert alike is not None
+        if first or alike.any():
             if rows.proof.unread:
                 raise _RowsAlike
+            same = np.append(first, alike)
             reader.reject_all(rows.numbers[same], "the row before again")
             rows = rows.take(~same)
         return rows, following

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Generator, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -11,6 +11,7 @@ import pyarrow as pa
 import pyarrow.compute as pc
 from numpy.typing import NDArray
 
+from qa.ingest.ahead import ahead
 from qa.ingest.names import Binding
 from qa.ingest.probe import SIDES, FileProbe
 from qa.ingest.proofs import NO_PROOF, Proof, counts_of, is_proven, proven
@@ -141,7 +142,7 @@ class RowReader:
 
     def batches(self) -> Iterator[Rows]:
         """The file's rows, batch after batch, in file order."""
-        for raw, proof in self._raw():
+        for raw, proof in ahead(self._raw()) if self._lazy else self._raw():
             yield self.convert(raw, proof)
         if self.state.leap_seconds:
             self.account.notes.append(
@@ -157,7 +158,7 @@ class RowReader:
             sources[side.source] = pa.string()
         return sources
 
-    def _raw(self) -> Iterator[tuple[RawBatch, Proof]]:
+    def _raw(self) -> Generator[tuple[RawBatch, Proof], None, None]:
         sources = self.kinds()
         opened = self.probe.open()
         if isinstance(opened, TableSource):
@@ -206,15 +207,14 @@ class RowReader:
         assert isinstance(opened, TableSource)
         sources = [b.source for b in self.bindings]
         try:
-            with np.errstate(over="ignore", invalid="ignore"):
-                for _, raw in opened.batches(sources, size, self._groups(opened)):
-                    if raw.length:
-                        reasons: list[tuple[NDArray[np.bool_], str]] = []
-                        beams = self._converted(raw, raw.rows, reasons).beams
-                        bad = (
-                            np.logical_or.reduce([mask for mask, _ in reasons]) if reasons else None
-                        )
-                        yield raw.rows, beams, bad
+            for _, raw in opened.batches(sources, size, self._groups(opened)):
+                if not raw.length:
+                    continue
+                reasons: list[tuple[NDArray[np.bool_], str]] = []
+                with np.errstate(over="ignore", invalid="ignore"):
+                    beams = self._converted(raw, raw.rows, reasons).beams
+                bad = np.logical_or.reduce([mask for mask, _ in reasons]) if reasons else None
+                yield raw.rows, beams, bad
         finally:
             opened.close()
 
@@ -344,7 +344,7 @@ class RowReader:
         pings: dict[str, NDArray[np.float64]] = {}
         flat: dict[str, NDArray[Any]] = {}
         codes: dict[str, Integers | None] = {"ping": None, "line": None, "channel": None}
-        counts: Integers = np.ones(n, dtype=np.int64)
+        counts: Integers = np.broadcast_to(np.ones(1, dtype=np.int64), n)
         lists: dict[str, tuple[Binding, pa.Array]] = {}
         wide: dict[str, dict[int, Converted]] = {}
         for binding in self.bindings:

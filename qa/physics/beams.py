@@ -308,7 +308,7 @@ def footprint_across(
     half_sine = np.sin((0.5 * _RADIANS) * beamwidth_across)
     edges = cosine * cosine - half_sine * half_sine
     with np.errstate(divide="ignore", invalid="ignore"):
-        footprint: FloatArray = height * np.sin(_RADIANS * beamwidth_across) / edges
+        footprint: FloatArray = height * (np.sin(_RADIANS * beamwidth_across) / edges)
     # The whole pass costs time on large batches, and nearly all batches hold ordinary beams only.
     if np.any(~(edges > 1e-12)):
         outer_edge = np.abs(beam_angle) + 0.5 * beamwidth_across

@@ -258,7 +258,7 @@ def three_checks(path: Path) -> list[np.ndarray]:
     survey = load_survey_file(path.with_name("survey.toml"))
     sheet = load_sheet(str(path.with_name("three.toml")), survey)
     (task,) = plan_logs([path], survey).lines
-    rules = evaluate_line(open_line(task, survey), survey, sheet).rules
+    rules = evaluate_line(open_line(task, survey), survey, sheet, threads=2).rules
     names = ("ping-interval", "range-resolution", "along-resolution", "across-resolution")
     return [rules[n].value for n in names]
 
