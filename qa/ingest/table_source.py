@@ -256,8 +256,13 @@ class TableSource:
         rows = np.arange(start + 1, start + 1 + batch.num_rows, dtype=np.int64)
 
         def texts(positions: NDArray[np.int64]) -> list[str]:
+            # By a handle of its own: another thread may be reading on, or have closed this one at the end.
             numbers = rows[positions].tolist()
-            found = self.rows(numbers)
+            again = TableSource(self.path, self.where)
+            try:
+                found = again.rows(numbers)
+            finally:
+                again.close()
             return [found[n] for n in numbers]
 
         return RawBatch(batch.num_rows, columns, rows, texts)
