@@ -121,7 +121,9 @@ def judge_beams(
         comparison = comparisons[0]
         left, right = comparison.left.run(values), comparison.right.run(values)
         if groups.width and not isinstance(left, str) and not isinstance(right, str):
-            found = _by_extremes(comparison.operator, left, right, groups, accepted)
+            one_limit = not np.ndim(right) or np.shape(right)[-1] == 1
+            quick = _by_extremes if one_limit else _by_margins
+            found = quick(comparison.operator, left, right, groups, accepted)
             if found is not None:
                 return found
     return _one_by_one(requirement, values, groups, accepted)
@@ -134,8 +136,6 @@ def _by_extremes(
 
     Only if every left side is known and finite, and every right finite and not zero; None else.
     """
-    if np.ndim(right) and np.shape(right)[-1] != 1:
-        return None
     pings = np.arange(len(groups.counts))
     limit = np.broadcast_to(np.asarray(right, dtype=float).reshape(-1), pings.shape)
     size = np.abs(limit)
@@ -174,6 +174,46 @@ def _by_extremes(
             missing = rows[missing // groups.width] * groups.width + missing % groups.width
     worst = np.where(known, pings * groups.width + column, -1)
     return BatchOutcome(assessed, missed, worst, ahead / size, value, limit, missing)
+
+
+def _by_margins(
+    operator: str, left: Any, right: Any, groups: Groups, accepted: Mask | None
+) -> BatchOutcome | None:
+    """The outcome from each ping's least margin, where the right side changes from beam to beam.
+
+    Only if every right side that is known is finite and not zero, and every margin finite; None else.
+    """
+    size = np.abs(np.asarray(right, dtype=float))
+    if not (np.fmin.reduce(size, axis=None) > 0.0 and np.fmax.reduce(size, axis=None) < np.inf):
+        return None
+    below = operator in ("<=", "<")
+    ahead = right - left if below else left - right
+    margin = np.array(groups.full(ahead / size))
+    unknown = np.isnan(margin)
+    if accepted is not None:
+        unknown |= ~groups.full(accepted)
+    margin[unknown] = np.inf
+    pings = np.arange(len(groups.counts))
+    column = margin.argmin(axis=1)
+    least = margin[pings, column]
+    assessed = groups.width - groups.counted(unknown)
+    known = assessed > 0
+    if not np.isfinite(least[known]).all():
+        return None
+    places = pings, column
+    value = np.where(known, groups.full(np.asarray(left, dtype=float))[places], np.nan)
+    limit = np.where(known, groups.full(np.asarray(right, dtype=float))[places], np.nan)
+    fails = known & ~_met(operator, groups.full(ahead)[places], np.abs(limit))
+    missed = np.zeros(pings.shape, dtype=np.int64)
+    missing = np.zeros(0, dtype=np.int64)
+    if fails.any():
+        misses = ~unknown & ~_met(operator, ahead, size)
+        missed = groups.counted(misses)
+        missing = np.flatnonzero(misses)
+    worst = np.where(known, pings * groups.width + column, -1)
+    return BatchOutcome(
+        assessed, missed, worst, np.where(known, least, np.nan), value, limit, missing
+    )
 
 
 def _met(operator: str, ahead: Any, size: Any) -> Any:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -54,15 +54,6 @@ class Groups:
             return np.asarray(values)
         return np.broadcast_to(values, self.shape)
 
-    @property
-    def unfolded(self) -> Groups:
-        """The same pings, for values of beams after one another."""
-        return replace(self, width=0)
-
-    def flat(self, values: Any) -> Any:
-        """Values of beams after one another; a number as it is."""
-        return self.full(values).ravel() if np.ndim(values) else values
-
     def at(self, values: Any, beams: NDArray[np.int64]) -> NDArray[Any]:
         """Values at some beams, counted after one another."""
         return np.asarray(self.full(values)[self.places(beams)])
@@ -76,6 +67,50 @@ class Groups:
         if self.width:
             return beams // self.width
         return np.flatnonzero(self.filled)[np.searchsorted(self.starts, beams, side="right") - 1]
+
+    def grid(
+        self, counted: NDArray[np.bool_] | None, *values: Any
+    ) -> tuple[tuple[Floats, ...], NDArray[np.bool_] | None]:
+        """Values of the counted beams as (pings, beams) arrays, each ping's from the left, NaN after them.
+
+        Parameters
+        ----------
+        counted : ndarray of bool, optional
+            In the batch's shape; every beam, if left out.
+        *values : ndarray or number
+            In the batch's shape, or what broadcasts to it.
+
+        Returns
+        -------
+        tuple of ndarray
+            Where every beam of a regular fan counts, the values as they were given, (n, 1) and (1, width) included.
+        ndarray of bool, shape (pings, beams), or None
+            Where in them the counted beams stand; None where that is everywhere.
+        """
+        if self.width and counted is None:
+            return tuple(np.atleast_2d(np.asarray(v, dtype=float)) for v in values), None
+        chosen = np.ones(self.shape, dtype=bool) if counted is None else self.full(counted)
+        number = self.counted(chosen)
+        most = int(number.max(initial=0))
+        there = np.arange(most) < number[:, None]
+        grids = []
+        for value in values:
+            grid = np.full(there.shape, np.nan)
+            grid[there] = self.full(value)[chosen]
+            grids.append(grid)
+        return tuple(grids), there
+
+    def scattered(
+        self, grid: Floats, there: NDArray[np.bool_] | None, counted: NDArray[np.bool_] | None
+    ) -> Floats:
+        """A grid of counted beams back in the batch's shape; NaN for those that do not count."""
+        if there is None:
+            return grid
+        if counted is None:
+            return grid[there].reshape(self.shape)
+        found = np.full(self.shape, np.nan)
+        found[self.full(counted)] = grid[there]
+        return found
 
     def spread(self, values: Any) -> Any:
         """A value for each ping, for its beams; one number where all are the same."""
@@ -153,6 +188,10 @@ def reduce_beams(
     if not groups.counts.any():
         return np.full(len(groups.counts), 0.0 if reducer == "count" else np.nan)
     values = np.asarray(values, dtype=float)
+    if reducer in ("nearest_vertical", "nearest_angle") and accepted is None:
+        found = _in_one_column(values, groups, nearness)
+        if found is not None:
+            return found
     if accepted is not None:
         values = np.where(accepted, values, np.nan)
     if reducer == "greatest":
@@ -177,8 +216,20 @@ def reduce_beams(
 
 def _extreme(fast: Any, careful: Any, values: Floats, groups: Groups) -> Floats:
     """Greatest or least, NaN passed over; the pass that minds NaN is taken where there is one."""
+    if groups.width and values.ndim == 2 and values.shape[1] == 1:
+        return np.broadcast_to(values[:, 0], groups.counts.shape)
     found = groups.reduced(fast, values, np.nan)
     return groups.reduced(careful, values, np.nan) if np.isnan(found).any() else found
+
+
+def _in_one_column(values: Floats, groups: Groups, nearness: Any) -> Floats | None:
+    """Values of the nearest beam where it is the same in every ping and known in all; None else."""
+    distance = np.asarray(nearness, dtype=float)
+    if not groups.width or distance.ndim != 2 or distance.shape != (1, groups.width):
+        return None
+    column = int(distance[0].argmin())
+    found = groups.full(values)[:, column]
+    return None if np.isnan(found).any() or not distance[0, column] < np.inf else found
 
 
 def nearest_beam(values: Floats, groups: Groups, nearness: Any) -> NDArray[np.int64]:

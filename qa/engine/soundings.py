@@ -43,30 +43,44 @@ def across_departure(height: Any, accepted: Any, groups: Groups) -> Floats:
 
     0 inside what the neighbours span or where fewer than five accepted beams are side by side.
     """
-    total = int(groups.counts.sum())
-    height = np.broadcast_to(np.asarray(height, dtype=float), (total,))
-    counted = np.broadcast_to(np.asarray(accepted) != 0.0, (total,)) & ~np.isnan(height)
-    found = np.where(np.isnan(height), np.nan, 0.0)
-    rows = np.flatnonzero(counted)
-    if len(rows) < 5:
-        return found
-    ping = np.repeat(np.arange(len(groups.counts)), groups.counts)[rows]
-    z = height[rows]
-    n = len(z)
-    middle = slice(2, n - 2)
-    a, b, c, d = z[: n - 4], z[1 : n - 3], z[3 : n - 1], z[4:]
-    low, high = np.minimum(a, b), np.maximum(a, b)
-    low2, high2 = np.minimum(c, d), np.maximum(c, d)
+    height = np.asarray(height, dtype=float)
+    counted = _counted(groups, accepted, height)
+    (z,), there = groups.grid(counted, groups.full(height))
+    if z.shape[1] < 5:
+        return np.where(np.isnan(groups.full(height)), np.nan, 0.0)
+    a, b, middle, c, d = z[:, :-4], z[:, 1:-3], z[:, 2:-2], z[:, 3:-1], z[:, 4:]
     # The second least and the second greatest: one wild neighbour decides nothing.
-    inner_low = np.minimum(np.maximum(low, low2), np.minimum(high, high2))
-    inner_high = np.maximum(np.maximum(low, low2), np.minimum(high, high2))
-    beyond = np.maximum(
-        z[middle] - np.maximum(inner_high, inner_low), np.minimum(inner_low, inner_high) - z[middle]
+    low, high = np.minimum(a, b), np.maximum(a, b)
+    low, high = (
+        np.maximum(low, np.minimum(c, d), out=low),
+        np.minimum(high, np.maximum(c, d), out=high),
     )
-    together = ping[: n - 4] == ping[4:]
-    share = np.maximum(beyond, 0.0) / np.abs(0.5 * (inner_low + inner_high))
-    found[rows[middle]] = np.where(together, share, 0.0)
-    return found
+    usual = low + high
+    usual *= 0.5
+    np.abs(usual, out=usual)
+    inner_high = np.maximum(low, high)
+    beyond = np.minimum(low, high, out=low)
+    beyond -= middle
+    np.maximum(beyond, np.subtract(middle, inner_high, out=inner_high), out=beyond)
+    np.maximum(beyond, 0.0, out=beyond)
+    beyond /= usual
+    share = np.zeros(z.shape)
+    share[:, 2:-2] = beyond
+    if there is None:
+        return share
+    share[:, 2:-2][~there[:, 4:]] = 0.0
+    found = groups.scattered(share, there, counted)
+    if counted is None:
+        return found
+    return np.where(counted, found, np.where(np.isnan(groups.full(height)), np.nan, 0.0))
+
+
+def _counted(groups: Groups, accepted: Any, *values: Any) -> NDArray[np.bool_] | None:
+    """Accepted beams of which all values are known; None where all beams are."""
+    known: Any = np.asarray(accepted) != 0.0
+    for value in values:
+        known = known & ~np.isnan(value)
+    return None if np.all(known) else groups.full(known)
 
 
 def fan_shape(
@@ -76,15 +90,19 @@ def fan_shape(
 
     A least-squares fit of 1, tan β and tan² β over the ping's accepted beams, given for each of its beams.
     """
-    total = int(groups.counts.sum())
-    z = np.broadcast_to(np.asarray(height, dtype=float), (total,))
-    t = np.tan(np.radians(np.broadcast_to(np.asarray(angle_from_vertical, dtype=float), (total,))))
-    weight = (
-        np.broadcast_to(np.asarray(accepted) != 0.0, (total,)) & ~np.isnan(z) & ~np.isnan(t)
-    ).astype(float)
-    z, t = np.where(weight > 0, z, 0.0), np.where(weight > 0, t, 0.0)
+    z = np.asarray(height, dtype=float)
+    t = np.tan(np.radians(np.asarray(angle_from_vertical, dtype=float)))
+    counted = _counted(groups, accepted, z, t)
+    weight: Any = np.ones((1, groups.width)) if groups.width else 1.0
+    if counted is not None:
+        weight = counted.astype(float)
+        z, t = np.where(counted, z, 0.0), np.where(counted, t, 0.0)
 
-    def summed(values: Floats) -> Floats:
+    def summed(values: Any) -> Floats:
+        values = np.asarray(values, dtype=float)
+        if groups.width and values.shape == (1, groups.width):
+            # The same for every ping.
+            return np.broadcast_to(np.add.reduceat(values[0], [0]), groups.counts.shape)
         return groups.reduced(np.add, values, 0.0)
 
     t2 = t * t
@@ -99,7 +117,7 @@ def fan_shape(
     solved = np.linalg.solve(normal, right[..., None])[..., 0]
     with np.errstate(invalid="ignore", divide="ignore"):
         share = np.where(enough & scale, solved[:, power] / (v[0] / s[0]), np.nan)
-    return np.repeat(share, groups.counts)
+    return share[:, None] if groups.width else np.repeat(share, groups.counts)
 
 
 def fan_tilt(height: Any, angle_from_vertical: Any, accepted: Any, groups: Groups) -> Floats:
@@ -165,11 +183,13 @@ def wobble_gain(time: Times, fan_tilt: Floats, roll: Floats) -> Floats:
 
 def next_beam_distance(height: Any, angle_from_vertical: Any, groups: Groups) -> Floats:
     """Distance over a flat seabed from each beam to the next of its ping; NaN for the last. [m]"""
-    total = int(groups.counts.sum())
-    z = np.broadcast_to(np.asarray(height, dtype=float), (total,))
-    t = np.tan(np.radians(np.broadcast_to(np.asarray(angle_from_vertical, dtype=float), (total,))))
-    found = np.full(total, np.nan)
-    found[:-1] = 0.5 * (z[1:] + z[:-1]) * np.abs(np.diff(t))
-    ends = np.cumsum(groups.counts)[groups.counts > 0] - 1
-    found[ends] = np.nan
+    z = groups.full(np.asarray(height, dtype=float))
+    t = np.tan(np.radians(np.asarray(angle_from_vertical, dtype=float)))
+    t = t if groups.width else groups.full(t)
+    found = np.full(groups.shape, np.nan)
+    np.add(z[..., 1:], z[..., :-1], out=found[..., :-1])
+    found[..., :-1] *= 0.5
+    found[..., :-1] *= np.abs(np.diff(t, axis=-1)) if t.ndim else 0.0
+    if not groups.width:
+        found[np.cumsum(groups.counts)[groups.counts > 0] - 1] = np.nan
     return found

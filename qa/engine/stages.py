@@ -18,6 +18,7 @@ from qa.model.findings import EXEMPT, MET, MISSED, NOT_ASSESSED, BeamMisses, Rul
 from qa.model.log import BeamBatch, ChannelSpan, Floats, LineLog, PingTable
 
 BATCH_ROWS = 100_000
+KEPT_BYTES = 1 << 24
 MOST_EVIDENCE = 8
 
 
@@ -262,8 +263,7 @@ def by_recipe(node: Node, values: Mapping[str, Any], groups: Groups | None = Non
     given = {p: values[need] for p, need in named if need not in node.absent}
     if recipe.within_ping:
         assert groups is not None
-        flat = {p: groups.flat(v) for p, v in given.items()}
-        return groups.folded(recipe.function(**flat, groups=groups.unfolded))
+        return recipe.function(**given, groups=groups)
     return recipe.function(**given)
 
 
@@ -291,6 +291,9 @@ def run_stages(
     threads : int
         Threads that work on batches.
     """
+    # Where memory is given back to the system as soon as it is free, each array of each batch is paged in anew, which
+    # takes longer than to compute it. What a C library keeps grows with what was freed once; this array costs nothing.
+    np.empty(KEPT_BYTES, dtype=np.uint8)
     columns = frozenset().union(*(r.plan.beam_columns for r in runs))
     reading = [r for r in runs if not r.plan.available.makes_beams]
     for run in runs:

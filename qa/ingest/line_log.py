@@ -239,7 +239,7 @@ class OpenedLine:
         twice = self._reads_twice()
         if twice:
             try:
-                return self._read_with(None, unread=frozenset(self._stored) - {"beam"})
+                return self._read_with(None, later=frozenset(self._stored) - {"beam"})
             except _RowsAlike:
                 self._start_again()
         return self._read_with(None if twice else Spill())
@@ -248,8 +248,8 @@ class OpenedLine:
         self._readers, self._places = [], _Places()
         self._beams_ordered, self._last_beam = True, None
 
-    def _read_with(self, aside: Spill | None, unread: frozenset[str] = frozenset()) -> PingTable:
-        """Read the line once, its beams put ``aside`` or to be read again; columns of ``unread`` only where one must."""
+    def _read_with(self, aside: Spill | None, later: frozenset[str] = frozenset()) -> PingTable:
+        """Read the line once, its beams put ``aside`` or to be read again; columns of ``later`` only where one must."""
         names = Names()
         runs = _Runs([], [], [], [], [], [], [], [])
         present: dict[str, bool] = {}
@@ -257,7 +257,7 @@ class OpenedLine:
         for at, part in enumerate(self._parts):
             start = self._places.count
             wanted = part.probe.roles - {"line"}
-            reader = RowReader(part.probe, names, wanted, part.stretch, lazy=True, unread=unread)
+            reader = RowReader(part.probe, names, wanted, part.stretch, lazy=True, later=later)
             self._readers.append(reader)
             if part.met is not None:
                 count = sum(last - first + 1 for first, last in part.met.spans)
@@ -364,7 +364,7 @@ class OpenedLine:
                 break
         assert alike is not None
         if first or alike.any():
-            if rows.proof.unread:
+            if rows.proof.unread - rows.proof.roles:
                 raise _RowsAlike
             same = np.append(first, alike)
             reader.reject_all(rows.numbers[same], "the row before again")

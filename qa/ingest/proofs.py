@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass, field
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -18,6 +18,7 @@ from qa.ingest.values import to_number
 from qa.model.columns import COLUMNS
 
 Integers = NDArray[np.int64]
+Roles = frozenset[str]
 _POSITIONS = ("latitude", "longitude", "easting", "northing")
 _NUMBERS = ("ping", "beam")
 _TICKS = {"s": 1_000_000_000, "ms": 1_000_000, "us": 1_000, "ns": 1}
@@ -28,11 +29,12 @@ class Proof:
     """Canonical columns without a cell that is missing, unreadable or impossible, in one part of one file.
 
     ``time`` turns the counts of the time's column into nanoseconds, where they are times, all of them. ``unread`` are
-    columns that were not even read.
+    columns that were not even read, ``constants`` those of them that have one value in all rows, as the file has it.
     """
 
     roles: frozenset[str] = frozenset()
     unread: frozenset[str] = frozenset()
+    constants: dict[str, float] = field(default_factory=dict)
     time: Callable[[Integers], Integers] | None = None
     bindings: dict[str, Binding] = field(default_factory=dict)
 
@@ -53,9 +55,40 @@ def counts_of(array: pa.Array) -> Integers:
     return np.asarray(array.to_numpy(), dtype=np.int64)
 
 
-def proven(
-    probe: FileProbe, source: TableSource, group: int, unread: frozenset[str] = frozenset()
+def unread(
+    probe: FileProbe, source: TableSource, group: int, bindings: Sequence[Binding], later: Roles
 ) -> Proof:
+    """What can be proven of some columns of a part so that they need not be read: a proof of nothing else.
+
+    Parameters
+    ----------
+    probe : FileProbe
+    source : TableSource
+        The file that is being read.
+    group : int
+        The part's number.
+    bindings : sequence of Binding
+        The columns that are wanted.
+    later : frozenset of str
+        Columns that will be read when they are wanted; the others are proven if they are constant.
+    """
+    candidates = [
+        b
+        for b in bindings
+        if b.role in later
+        or (b.role in COLUMNS and COLUMNS[b.role].grain == "ping" and b.role not in _NUMBERS)
+    ]
+    if not candidates or not source.groups[group]:
+        return NO_PROOF
+    source.try_out([b.source for b in candidates], group)
+    sound = [b for b in candidates if is_proven(b, probe, source, group)]
+    same = source.constants([b.source for b in sound if b.role not in later], group)
+    found = {b.role: b for b in sound if b.role in later or b.source in same}
+    constants = {role: same[b.source] for role, b in found.items() if b.source in same}
+    return Proof(frozenset(constants), frozenset(found), constants, None, found)
+
+
+def proven(probe: FileProbe, source: TableSource, group: int, before: Proof) -> Proof:
     """What the statistics of one part prove of the columns that were read from it.
 
     Parameters
@@ -65,15 +98,20 @@ def proven(
         The file that is being read.
     group : int
         The part's number. The caller has read from it: damaged statistics are refused by then.
-    unread : frozenset of str
-        Columns that were proven to be so before, and are not read.
+    before : Proof
+        What was proven of the columns that are not read.
     """
     found = {
         b.role: b
         for b in probe.bindings
-        if b.role not in unread and is_proven(b, probe, source, group)
+        if b.role not in before.unread and is_proven(b, probe, source, group)
     }
-    return Proof(frozenset(found), unread, _times(probe, source, group), found)
+    return replace(
+        before,
+        roles=before.roles | frozenset(found),
+        time=_times(probe, source, group),
+        bindings=before.bindings | found,
+    )
 
 
 def is_proven(binding: Binding, probe: FileProbe, source: TableSource, group: int) -> bool:

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from qa.ingest.ahead import ahead
 from qa.ingest.names import Binding
 from qa.ingest.probe import SIDES, FileProbe
-from qa.ingest.proofs import NO_PROOF, Proof, counts_of, is_proven, proven
+from qa.ingest.proofs import NO_PROOF, Proof, counts_of, proven, unread
 from qa.ingest.table_source import TableSource
 from qa.ingest.text_source import RawBatch
 from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
@@ -118,7 +118,7 @@ class RowReader:
     """Reads one file, or a stretch of it, as canonical rows, keeping its account.
 
     With ``lazy``, cells of which a Parquet file's statistics prove that none is missing or impossible are left as they
-    are, and columns of ``unread`` that are proven so are not read at all.
+    are. Columns of ``later`` that are proven so, and such as have one value throughout, are not read at all.
     """
 
     def __init__(
@@ -128,10 +128,10 @@ class RowReader:
         wanted: frozenset[str] | None = None,
         stretch: Stretch | None = None,
         lazy: bool = False,
-        unread: frozenset[str] = frozenset(),
+        later: frozenset[str] = frozenset(),
     ) -> None:
         self.probe, self.names, self.stretch = probe, names, stretch
-        self._lazy, self._unread = lazy, unread
+        self._lazy, self._later = lazy, later
         self.account = FileAccount(probe.shown, notes=list(probe.notes))
         self.state = TimeState()
         self.bindings = tuple(b for b in probe.bindings if wanted is None or b.role in wanted)
@@ -188,15 +188,12 @@ class RowReader:
             for _, raw in opened.batches(sources, groups=[group]):
                 yield raw, NO_PROOF
             return
-        unread = [b for b in self.bindings if b.role in self._unread]
-        if unread:
-            opened.try_out([b.source for b in unread], group)
-            unread = [b for b in unread if is_proven(b, self.probe, opened, group)]
-        sources = [name for name in sources if name not in {b.source for b in unread}]
+        before = unread(self.probe, opened, group, self.bindings, self._later)
+        passed = {before.bindings[role].source for role in before.unread}
         proof: Proof | None = None
-        for _, raw in opened.batches(sources, groups=[group]):
+        for _, raw in opened.batches([s for s in sources if s not in passed], groups=[group]):
             if proof is None:
-                proof = proven(self.probe, opened, group, frozenset(b.role for b in unread))
+                proof = proven(self.probe, opened, group, before)
             yield raw, proof
 
     def beams(
@@ -347,9 +344,11 @@ class RowReader:
         counts: Integers = np.broadcast_to(np.ones(1, dtype=np.int64), n)
         lists: dict[str, tuple[Binding, pa.Array]] = {}
         wide: dict[str, dict[int, Converted]] = {}
+        for role, constant in proof.constants.items():
+            pings[role] = np.broadcast_to(np.asarray(constant), n)
         for binding in self.bindings:
             role = binding.role
-            if binding.source not in raw.columns:
+            if role in proof.unread:
                 continue
             array = raw.columns[binding.source]
             if role in proof.roles and role == "ping":

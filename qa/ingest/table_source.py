@@ -15,6 +15,7 @@ import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from qa.ingest.names import Header
+from qa.ingest.page_headers import dictionary_size
 from qa.ingest.text_source import RawBatch
 from qa.model.errors import InputError
 
@@ -181,6 +182,25 @@ class TableSource:
             return statistics.min, statistics.max
         except (ValueError, TypeError, IndexError, pa.ArrowException):
             return None
+
+    def constants(self, names: Sequence[str], group: int) -> dict[str, float]:
+        """Columns of numbers that have one value, and nothing else, in all rows of a part, with that value.
+
+        Their least and greatest are the same, no cell is empty, and their dictionary has one entry: it would have
+        another for a cell that is no number (NaN), of which the statistics do not tell. The columns must have been
+        read from before, as for :meth:`extremes`.
+        """
+        found: dict[str, float] = {}
+        with self.path.open("rb") as file:
+            for name in names:
+                extremes = self.extremes(name, group)
+                if extremes is None or extremes[0] != extremes[1]:
+                    continue
+                column = self._file.metadata.row_group(group).column(self.schema.names.index(name))
+                start = column.dictionary_page_offset
+                if start and not column.file_path and dictionary_size(file, start) == 1:
+                    found[name] = extremes[0]
+        return found
 
     def try_out(self, names: Sequence[str], group: int) -> None:
         """Read one row of some columns of a part, so that damage shows as an error."""
