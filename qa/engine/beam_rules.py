@@ -76,11 +76,11 @@ class WorstBeams:
         """The next batch's misses: one in ``step`` is kept, whatever the batches are."""
         self.misses.append(found.thinned(-self.total % self.step, self.step))
         self.total += len(found.beams)
-        self.thin(4 * MOST_MISSES)
+        self.thin(4)
 
-    def thin(self, most: int = MOST_MISSES) -> None:
-        """Keep no more than so many."""
-        while sum(len(pings) for pings, _ in self.misses) > most:
+    def thin(self, times: int = 1) -> None:
+        """Keep no more than ``times`` as many as are shown."""
+        while sum(len(pings) for pings, _ in self.misses) > times * MOST_MISSES:
             pings, angles = (np.concatenate(each) for each in zip(*self.misses, strict=True))
             self.misses = [(pings[::2], angles[::2])]
             self.step *= 2

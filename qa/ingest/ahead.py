@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Generator, Iterator
+from collections.abc import Generator
 from concurrent.futures import Future, ThreadPoolExecutor
 from typing import TypeVar
 
@@ -13,7 +13,7 @@ Item = TypeVar("Item")
 _END = object()
 
 
-def ahead(items: Generator[Item, None, None], most: int = 2) -> Iterator[Item]:
+def ahead(items: Generator[Item, None, None], most: int = 2) -> Generator[Item, None, None]:
     """The same items in the same order, up to ``most`` of them made before they are asked for.
 
     Where Arrow may use one thread only, so may this: then nothing is read ahead.

@@ -102,10 +102,12 @@ def run() -> Any:
         limits: Mapping[str, Any] | None = None,
         sheet: str | Path = "physics",
         rows: int = 100_000,
+        threads: int = 1,
         **more: Any,
     ) -> Audited:
         survey = SurveyFile(stated=dict(stated or {}), limits=dict(limits or {}), **more)
-        return Audited(evaluate_line(log, survey, load_sheet(sheet, survey), rows=rows))
+        found = evaluate_line(log, survey, load_sheet(sheet, survey), rows=rows, threads=threads)
+        return Audited(found)
 
     return run_it
 
