@@ -448,7 +448,7 @@ class RowReader:
         values, missing, bad = to_whole(array, self.probe.decimal_comma)
         if bad is not None:
             reasons.append((bad, f"the {binding.role} number is no whole number"))
-        if missing.any():
+        if missing is not None and missing.any():
             reasons.append((missing, f"no {binding.role} number"))
         return values
 

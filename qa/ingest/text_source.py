@@ -243,8 +243,12 @@ def _blocks(
                         advice="Cut the file off before that row, or copy it again.",
                     )
                 continue
-            block, carried = carried + data[:cut], data[cut:]
-            count = block.count(b"\n")
+            block = (
+                b"".join((carried, memoryview(data)[:cut])) if carried or cut < len(data) else data
+            )
+            carried = data[cut:]
+            # Other threads go on while numpy counts, and it is faster.
+            count = int(np.count_nonzero(np.frombuffer(block, dtype=np.uint8) == 10))
             if starts is not None:
                 starts.append((at, line))
             at += len(block) + (form.mark if not line else 0)

@@ -534,6 +534,10 @@ def _from_instants(
 ) -> tuple[Integers, NDArray[np.bool_]]:
     zoned = array.type.tz is not None
     scale = {"s": SECOND_NS, "ms": 1_000_000, "us": 1_000, "ns": 1}[array.type.unit]
+    if not array.null_count and scale == 1:
+        counts = array.view(pa.int64()).to_numpy()
+        times = counts if zoned else _to_utc(counts, zone, state)
+        return times, np.zeros(len(times), dtype=bool)
     counts = array.cast(pa.int64()).fill_null(NO_TIME).to_numpy(zero_copy_only=False)
     none = counts == NO_TIME
     limit = np.iinfo(np.int64).max // scale

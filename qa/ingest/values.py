@@ -349,8 +349,10 @@ def _name(value: Any) -> str:
     return str(value).strip()
 
 
-def to_whole(array: pa.Array, decimal_comma: bool) -> tuple[NDArray[np.int64], Mask, Mask | None]:
-    """Whole numbers (ping, beam numbers), where they are missing, and where a cell is none."""
+def to_whole(
+    array: pa.Array, decimal_comma: bool
+) -> tuple[NDArray[np.int64], Mask | None, Mask | None]:
+    """Whole numbers (ping, beam numbers), where they are missing, and where a cell is none; None for nowhere."""
     if isinstance(array, pa.ChunkedArray):
         array = array.combine_chunks()
     if pa.types.is_dictionary(array.type):
@@ -359,10 +361,11 @@ def to_whole(array: pa.Array, decimal_comma: bool) -> tuple[NDArray[np.int64], M
         with contextlib.suppress(pa.ArrowInvalid):
             array = pc.utf8_trim_whitespace(array).cast(pa.int64())
     if pa.types.is_integer(array.type) and not pa.types.is_uint64(array.type):
-        missing = np.asarray(array.is_null().to_numpy(zero_copy_only=False))
         whole = array.cast(pa.int64())
-        whole = whole.fill_null(0) if array.null_count else whole
-        return np.asarray(whole.to_numpy(zero_copy_only=False)), missing, None
+        if not array.null_count:
+            return np.asarray(whole.to_numpy()), None, None
+        missing = np.asarray(array.is_null().to_numpy(zero_copy_only=False))
+        return np.asarray(whole.fill_null(0).to_numpy(zero_copy_only=False)), missing, None
     numbers, bad = number_of(array, decimal_comma)
     numbers = numbers.astype(np.float64)
     wrong = np.zeros(len(numbers), dtype=bool) if bad is None else bad.copy()
