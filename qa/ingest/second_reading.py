@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Stretch
+from qa.ingest.table_source import BATCH_ROWS
 from qa.model.errors import InputError
 
 
@@ -44,7 +45,7 @@ class SecondReading:
         self._files = tuple(files)
 
     def batches(
-        self, names: Sequence[str], size: int = 1 << 17
+        self, names: Sequence[str], size: int = BATCH_ROWS
     ) -> Iterator[dict[str, NDArray[Any]]]:
         """The named beam columns, batch after batch of up to ``size`` rows; NaN, or accepted, where a file has none.
 
