@@ -26,6 +26,7 @@ from qa.model.survey_file import (
     LINE_KEYS,
     MORE_KEYS,
     PART_KEYS,
+    ROWS,
     STATED,
     SURVEY_KEYS,
     SURVEY_TABLES,
@@ -113,6 +114,7 @@ _COLUMN_ABOUT = {
     "ignore": "Names in the file that are not read.",
     "hold": "Columns that are logged only when they change.",
     "order": "Columns of a file without a header, from the left.",
+    "rows": "What a row without beams is: a ping, or a message that repeats the last ping until the next.",
     "units": "Units of columns, where neither the header nor the file's metadata says.",
 }
 _LINE_ABOUT = {
@@ -291,6 +293,7 @@ def _columns() -> Schema:
         "ignore": _TEXTS,
         "hold": _one_or_more({"enum": held}),
         "order": _TEXTS,
+        "rows": {"enum": list(ROWS)},
         "units": {"type": "object", "properties": names, "additionalProperties": False},
     }
     found = _object(COLUMN_KEYS, keys, _COLUMN_ABOUT)

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from qa.ingest import spill
+from qa.ingest.messages import MEASURED, MESSAGE_SHARE, SET, Repeats, find_repeats
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Rows, Stretch
 from qa.ingest.second_reading import ReadBefore, SecondReading
@@ -22,9 +23,8 @@ from qa.model.columns import COLUMNS
 from qa.model.log import BeamBatch, ChannelSpan, FileAccount, PingTable
 from qa.model.survey_file import SurveyFile
 
-MESSAGE_SHARE = 0.2
-"""Where more than this share of rows repeats the ping before, rows are messages and not pings."""
-
+SAMPLE_BEAMS = 100_000
+"""Beams by which it is decided whether all are worth a look."""
 MET_BEFORE = "a ping that was met before"
 """Why a row is rejected that stands in another file too."""
 SHUFFLED_SHARE = 0.3
@@ -535,10 +535,11 @@ class OpenedLine:
         kept = np.ones(len(time), dtype=bool)
         if self._grain == "ping":
             self._drop_duplicates(kept, time, ping, channel, columns, number, file)
-            if logged:
-                self._drop_messages(kept, time, ping, channel, file, length)
+            self._drop_messages(kept, time, ping if logged else None, channel, columns, file)
         else:
             different = self._drop_same_pings(kept, time, ping, channel, file, length)
+            if any(part.probe.layout != "long" for part in self._parts):
+                self._drop_messages(kept, time, ping if logged else None, channel, columns, file)
             if different and logged:
                 runs_met = _Met(time, ping, channel, counts, length, number, file, columns)
                 merged = self._gathered(runs_met, kept)
@@ -628,31 +629,86 @@ class OpenedLine:
         self,
         kept: NDArray[np.bool_],
         time: Integers,
-        ping: Integers,
+        ping: Integers | None,
         channel: Integers,
+        columns: Mapping[str, NDArray[np.float64]],
         file: Integers,
-        length: Integers,
     ) -> None:
-        """Rows at message rate repeat the last ping under its number: they are no pings of their own."""
-        rows = np.flatnonzero(kept)
-        if len(rows) < 4:
+        """Rows at message rate repeat the last ping: they are no pings of their own."""
+        rows, choice = np.flatnonzero(kept), self.survey.columns.rows
+        if len(rows) < 4 or choice == "pings":
             return
-        same = (np.diff(ping[rows]) == 0) & (np.diff(channel[rows]) == 0)
-        for values in self._beam_rows():
-            here = np.asarray(values[rows], dtype=float)
-            same &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
-        if same.mean() <= MESSAGE_SHARE:
-            return
-        again = rows[1:][same]
+        if ping is not None:
+            again = rows[1:][self._numbered_again(rows, ping, channel)]
+            if choice != "messages" and len(again) <= MESSAGE_SHARE * (len(rows) - 1):
+                return
+            how = "under its number"
+        else:
+            found = self._alike_again(rows, time, channel, columns, file)
+            if found.rows == "either":
+                self._readers[0].account.notes.append(
+                    f"Values often stay the same for {found.usual} rows or so: each row was taken as a ping. If rows are "
+                    'messages that repeat the last ping, write rows = "messages" under [columns] in the survey file.'
+                )
+            again = rows[found.again]
+            how = f"as {found.usual} rows usually do"
         kept[again] = False
         for at, reader in enumerate(self._readers):
             count = int((file[again] == at).sum())
             if count:
                 reader.account.rows_out_of_scope += count
                 reader.account.notes.append(
-                    f"{count} rows repeat the ping of the row before them: rows are messages here, not pings, and the "
-                    "first row of each ping was taken."
+                    f"{count} rows repeat the ping of the row before them {how}: rows are messages here, not pings, and "
+                    "the first row of each ping was taken, with its time. If they are pings, write "
+                    'rows = "pings" under [columns] in the survey file.'
                 )
+
+    def _numbered_again(
+        self, rows: Integers, ping: Integers, channel: Integers
+    ) -> NDArray[np.bool_]:
+        """Which rows, from the second on, have the ping number and the beams of the row before."""
+        same: NDArray[np.bool_] = (np.diff(ping[rows]) == 0) & (np.diff(channel[rows]) == 0)
+        if same.any():
+            for values in self._values_of_pings(len(ping)):
+                here = values[rows]
+                same &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+        return same
+
+    def _values_of_pings(
+        self, count: int, chosen: Collection[str] | None = None
+    ) -> list[NDArray[np.float64]]:
+        """Beam columns with one value a ping; where pings have more beams, one number that all of them make."""
+        if (self._counts == 1).all():
+            pairs = zip(self._stored, self._beam_rows(), strict=True)
+            return [
+                np.asarray(values, dtype=np.float64)
+                for name, values in pairs
+                if chosen is None or name in chosen
+            ]
+        # The same beams make the same number, and others another.
+        return [np.unique(self._digests(count), return_inverse=True)[1].astype(np.float64)]
+
+    def _alike_again(
+        self,
+        rows: Integers,
+        time: Integers,
+        channel: Integers,
+        columns: Mapping[str, NDArray[np.float64]],
+        file: Integers,
+    ) -> Repeats:
+        """Which rows have no ping number and measure what the row before does."""
+        if not set(self._stored) & set(MEASURED):
+            measured = []
+        elif not (self._counts == 1).all() and not self._begins_alike(len(time)):
+            return Repeats("pings", np.zeros(len(rows), dtype=bool))
+        else:
+            measured = [v[rows] for v in self._values_of_pings(len(time), MEASURED)]
+        measured += [columns[name][rows] for name in MEASURED if name in columns]
+        settings = [columns[name][rows] for name in SET if name in columns]
+        source = channel[rows] * len(self._readers) + file[rows]
+        stated = self.survey.columns.rows == "messages"
+        beams = int(np.median(self._counts[rows]))
+        return find_repeats(time[rows], source, measured, settings, beams, stated)
 
     def _gathered(self, runs: _Met, kept: NDArray[np.bool_]) -> _Met | None:
         """Beams of a ping that stand apart in the file, brought together in memory; None where none do.
@@ -795,22 +851,35 @@ class OpenedLine:
                     "different heads, log a channel."
                 )
 
-    def _digests(self, count: int) -> Integers:
-        """For each run a number that its beams' values give: equal where all of them are."""
+    def _begins_alike(self, count: int) -> bool:
+        """Whether many pings among the first have the beams of the ping before."""
+        first = int(np.searchsorted(np.cumsum(self._counts), SAMPLE_BEAMS))
+        digests = self._digests(count, SAMPLE_BEAMS)[:first]
+        return len(digests) > 1 and bool((np.diff(digests) == 0).mean() > MESSAGE_SHARE)
+
+    def _digests(self, count: int, most: int | None = None) -> Integers:
+        """For each run a number that its beams' values give: equal where all of them are.
+
+        With ``most`` only about so many beams are looked at, from the first on.
+        """
         digest = np.zeros(count, dtype=np.uint64)
         runs = np.repeat(np.arange(count), self._counts)
         stored = self._stored
         passed = 0
         for batch in self._spill.batches(stored):
+            here = runs[passed : passed + len(batch[stored[0]])]
+            starts = np.concatenate([[0], np.flatnonzero(np.diff(here)) + 1]) if len(here) else here
             for weight, name in enumerate(stored, start=1):
                 bits = np.asarray(batch[name], dtype=np.float64).view(np.uint64)
                 mixed = (bits ^ (bits >> np.uint64(29))) * np.uint64(
                     0x9E3779B97F4A7C15 + 2 * weight
                 )
-                np.add.at(
-                    digest, runs[passed : passed + len(bits)], mixed ^ (mixed >> np.uint64(32))
-                )
-            passed += len(bits)
+                mixed ^= mixed >> np.uint64(32)
+                if len(here):
+                    digest[here[starts]] += np.add.reduceat(mixed, starts)
+            passed += len(here)
+            if most is not None and passed >= most:
+                break
         return digest.view(np.int64)
 
     def _finish_accounts(self, file: Integers, length: Integers, kept: NDArray[np.bool_]) -> None:

@@ -85,7 +85,8 @@ SURVEY_KEYS = ("name", "sheet", "python", "depth_from", "time_zone")
 MORE_KEYS: dict[str, tuple[str, ...]] = {"water": ("profile",), "vessel": ("time_zone",)}
 """What tables hold beside what they state."""
 
-COLUMN_KEYS = ("ignore", "hold", "order", "units")
+COLUMN_KEYS = ("ignore", "hold", "order", "rows", "units")
+ROWS = ("pings", "messages")
 LINE_KEYS = ("from", "gap")
 PART_KEYS = ("logs", "depth_from", "time_zone")
 DepthFrom = Literal["waterline", "transducer", "datum"]
@@ -94,13 +95,17 @@ DEPTH_FROM = ("waterline", "transducer", "datum")
 
 @dataclass(frozen=True, slots=True)
 class ColumnChoices:
-    """The [columns] table: how a log's own names map to canonical ones."""
+    """The [columns] table: how a log's own names map to canonical ones.
+
+    ``rows`` says what a row of a log without beams is: one of :data:`ROWS`, or "" to find out.
+    """
 
     names: Mapping[str, str] = field(default_factory=dict)
     ignore: tuple[str, ...] = ()
     hold: tuple[str, ...] = ()
     order: tuple[str, ...] = ()
     units: Mapping[str, str] = field(default_factory=dict)
+    rows: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -475,4 +480,12 @@ def _columns(base: ColumnChoices, table: Mapping[str, Any], where: str) -> Colum
                     expected=f"a unit of {COLUMNS[name].unit}",
                 )
         units[name] = unit
-    return ColumnChoices(names, chosen["ignore"], chosen["hold"], chosen["order"], units)
+    rows = table.get("rows", base.rows)
+    if rows not in ("", *ROWS):
+        raise SurveyFileError(
+            "Not what a row can be.",
+            where=f"{where}rows",
+            found=repr(rows),
+            expected=" or ".join(f'"{choice}"' for choice in ROWS),
+        )
+    return ColumnChoices(names, chosen["ignore"], chosen["hold"], chosen["order"], units, rows)
