@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from qa.ingest import spill
+from qa.ingest.apart import ScatteredPlaces, in_order
 from qa.ingest.messages import MEASURED, MESSAGE_SHARE, SET, Repeats, find_repeats
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Rows, Stretch
@@ -23,6 +24,11 @@ from qa.model.columns import COLUMNS
 from qa.model.log import BeamBatch, ChannelSpan, FileAccount, PingTable
 from qa.model.survey_file import SurveyFile
 
+MOST_RUNS, FEWEST_ROWS = 500_000, 4
+"""More runs of rows than this, of fewer rows each, are no pings: the rows of each ping stand apart."""
+MOST_GATHERED = 1 << 27
+"""Bytes of beams that are brought together in memory; more are on disk."""
+_TOGETHER = "Beams of one ping stand apart in the file; they were brought together."
 SAMPLE_BEAMS = 100_000
 """Beams by which it is decided whether all are worth a look."""
 MET_BEFORE = "a ping that was met before"
@@ -89,6 +95,10 @@ class _Met:
     columns: dict[str, NDArray[np.float64]]
 
 
+class _RowsApart(Exception):
+    """Rows of one ping stand apart, and are too many to be brought together in memory."""
+
+
 class _RowsAlike(Exception):
     """Rows that follow one another are alike in all that was read of them; the rest must be read too."""
 
@@ -102,7 +112,7 @@ class _Places:
         self.count = 0
 
     def add(self, numbers: Integers) -> None:
-        """The next rows of the stream, their numbers rising."""
+        """The next rows of the stream, their numbers rising from one to the next."""
         starts = np.zeros(1, dtype=np.int64)
         if numbers[-1] - numbers[0] != len(numbers) - 1:
             starts = np.append(starts, np.flatnonzero(np.diff(numbers) != 1) + 1)
@@ -144,8 +154,11 @@ class OpenedLine:
         self._beam_columns: frozenset[str] = frozenset()
         self._counts: Integers = np.zeros(0, dtype=np.int64)
         self._position: Integers = np.zeros(0, dtype=np.int64)
-        self._places = _Places()
+        self._places: _Places | ScatteredPlaces = _Places()
         self._beams_ordered = True
+        self._apart, self._met = False, 0
+        self._last_beam: Any = None
+        self._rows_of_files: Integers | None = None
 
     @property
     def name(self) -> str:
@@ -237,16 +250,20 @@ class OpenedLine:
 
     def _read(self) -> PingTable:
         twice = self._reads_twice()
-        if twice:
+        later = frozenset(self._stored) - {"beam"} if twice else frozenset[str]()
+        while True:
             try:
-                return self._read_with(None, later=frozenset(self._stored) - {"beam"})
+                return self._read_with(None if twice else Spill(), later)
             except _RowsAlike:
-                self._start_again()
-        return self._read_with(None if twice else Spill())
+                later = frozenset()
+            except _RowsApart:
+                later, twice, self._apart = frozenset(), False, True
+            self._start_again()
 
     def _start_again(self) -> None:
-        self._readers, self._places = [], _Places()
-        self._beams_ordered, self._last_beam = True, None
+        self._readers, self._met = [], 0
+        self._places = ScatteredPlaces() if self._apart else _Places()
+        self._beams_ordered, self._last_beam, self._rows_of_files = True, None, None
 
     def _read_with(self, aside: Spill | None, later: frozenset[str] = frozenset()) -> PingTable:
         """Read the line once, its beams put ``aside`` or to be read again; columns of ``later`` only where one must."""
@@ -257,7 +274,8 @@ class OpenedLine:
         for at, part in enumerate(self._parts):
             start = self._places.count
             wanted = part.probe.roles - {"line"}
-            reader = RowReader(part.probe, names, wanted, part.stretch, lazy=True, later=later)
+            lazy = not self._apart
+            reader = RowReader(part.probe, names, wanted, part.stretch, lazy=lazy, later=later)
             self._readers.append(reader)
             if part.met is not None:
                 count = sum(last - first + 1 for first, last in part.met.spans)
@@ -265,8 +283,9 @@ class OpenedLine:
                     f"{count} rows stand in {part.met_in} too, value for value; each was counted once, there."
                 )
             self._read_file(at, part, reader, runs, present, aside)
-            spans = self._places.spans(start, self._places.count)
-            read.append(ReadBefore(part.probe, part.stretch, *spans))
+            if isinstance(self._places, _Places):
+                spans = self._places.spans(start, self._places.count)
+                read.append(ReadBefore(part.probe, part.stretch, *spans))
         if aside is None:
             self._spill = SecondReading(read)
         else:
@@ -298,7 +317,8 @@ class OpenedLine:
     ) -> None:
         stored = self._stored
         last: dict[str, Any] | None = None
-        for rows in reader.batches():
+        together = False
+        for rows in self._rows_of(part, reader):
             rows = self._in_scope(rows, part, reader)
             if not len(rows):
                 continue
@@ -312,7 +332,20 @@ class OpenedLine:
             self._note_beam_order(rows, starts, continues)
             self._keep(rows, starts, continues, runs, at)
             self._put_aside(rows, stored, present, aside)
+            if self._apart:
+                together = together or bool((np.diff(rows.numbers) < 0).any())
+            elif self._met > MOST_RUNS and self._places.count < FEWEST_ROWS * self._met:
+                raise _RowsApart
+        if together:
+            reader.account.notes.append(_TOGETHER)
         self._resolve_notes(reader, runs, at)
+
+    def _rows_of(self, part: FilePart, reader: RowReader) -> Iterator[Rows]:
+        """The rows of a file; in the order of their times where those of a ping are known to stand apart."""
+        if not self._apart or part.probe.grain != "beam" or part.probe.layout != "long":
+            return reader.batches()
+        times = RowReader(part.probe, Names(), frozenset(), part.stretch)
+        return in_order(times, reader)
 
     def _in_scope(self, rows: Rows, part: FilePart, reader: RowReader) -> Rows:
         if part.met is not None:
@@ -399,8 +432,6 @@ class OpenedLine:
             continues = bool(same)
         return starts, continues
 
-    _last_beam: Any = None
-
     def _note_beam_order(self, rows: Rows, starts: NDArray[np.bool_], continues: bool) -> None:
         """Find out whether beams stand in the order of their numbers within each ping."""
         beam = rows.beams.get("beam")
@@ -438,6 +469,8 @@ class OpenedLine:
         if not len(first):
             return
         n = len(first)
+        if self._parts[at].probe.layout == "long" and self._grain == "beam":
+            self._met += n
         blank = np.full(n, -1, dtype=np.int64)
         runs.time.append(rows.time[first])
         runs.ping.append(rows.ping[first] if rows.ping is not None else blank)
@@ -711,7 +744,7 @@ class OpenedLine:
         return find_repeats(time[rows], source, measured, settings, beams, stated)
 
     def _gathered(self, runs: _Met, kept: NDArray[np.bool_]) -> _Met | None:
-        """Beams of a ping that stand apart in the file, brought together in memory; None where none do.
+        """Beams of a ping that stand apart in the file, brought together; None where none do.
 
         Runs of one ping that give different values for one beam are of different heads: they are left apart.
         """
@@ -727,6 +760,8 @@ class OpenedLine:
         group = np.zeros(count, dtype=np.int64)
         group[order] = np.concatenate([[0], np.cumsum(~same)])
         names = self._stored
+        if not self._apart and 8 * len(names) * int(runs.counts.sum()) > MOST_GATHERED:
+            raise _RowsApart
         arrays = dict(zip(names, self._beam_rows(), strict=True))
         owner = np.repeat(np.arange(count), runs.counts)
         row_order = np.lexsort((arrays["beam"], group[owner]))
@@ -771,9 +806,7 @@ class OpenedLine:
         )
         moved = np.unique(runs.file[order[1:][same]]).tolist()
         for at in moved:
-            self._readers[at].account.notes.append(
-                "Beams of one ping stand apart in the file; they were brought together."
-            )
+            self._readers[at].account.notes.append(_TOGETHER)
         return _Met(
             runs.time[first],
             runs.ping[first],
@@ -890,8 +923,6 @@ class OpenedLine:
             reader.account.rows_used = int(used)
             reader.write_out()
             reader.account.rejected_rows.sort(key=lambda r: r.row)
-
-    _rows_of_files: Integers | None = None
 
     def _order(
         self,

@@ -55,6 +55,11 @@ class Spill:
         else:
             self._writer.write_batch(batch)
 
+    @property
+    def columns(self) -> list[str]:
+        """Names of the columns that were put aside."""
+        return [] if self._schema is None else list(self._schema.names)
+
     def _to_file(self) -> None:
         self._folder = tempfile.mkdtemp(prefix="pingworthy-")
         self._finalizer = weakref.finalize(self, shutil.rmtree, self._folder, True)
