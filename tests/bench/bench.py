@@ -86,27 +86,33 @@ require = "footprint_across <= target_size"
 # The logs
 
 
-def write_log(path: Path, soundings: int, jitter: float = 0.0, group: int = GROUP) -> None:
-    """A line of pings of 400 beams over a gentle seabed, as Parquet; settings stand on each row."""
+def write_log(
+    path: Path, soundings: int, jitter: float = 0.0, group: int = GROUP, start: int = 0
+) -> None:
+    """A line of pings of 400 beams over a gentle seabed, as Parquet; settings stand on each row.
+
+    ``start`` counts days: lines of their own have times of their own.
+    """
     random = np.random.default_rng(11)
     pings = soundings // BEAMS
     fan = np.linspace(-60.0, 60.0, BEAMS)
     steps = 0.25 + random.uniform(-0.03, 0.03, pings)
-    stamps = 1_700_000_000_000_000 + np.cumsum((steps * 1e6).astype(np.int64))
+    stamps = 1_700_000_000_000_000 + start * 86_400_000_000
+    stamps = stamps + np.cumsum((steps * 1e6).astype(np.int64))
     writer: Any = None
     gathered: list[pa.Table] = []
-    for start in range(0, pings, 2500):
-        n = min(2500, pings - start)
-        height = 30.0 + 5.0 * np.sin((start + np.arange(n)) / 900.0)
+    for first in range(0, pings, 2500):
+        n = min(2500, pings - first)
+        height = 30.0 + 5.0 * np.sin((first + np.arange(n)) / 900.0)
         angle = np.tile(fan, (n, 1))
         if jitter:
             angle = angle + random.normal(0.0, jitter, angle.shape)
         depth = height[:, None] + random.normal(0.0, 0.05, angle.shape)
         columns = {
             "time": pa.array(
-                np.repeat(stamps[start : start + n], BEAMS), pa.timestamp("us", "UTC")
+                np.repeat(stamps[first : first + n], BEAMS), pa.timestamp("us", "UTC")
             ),
-            "ping": pa.array(np.repeat(np.arange(start, start + n), BEAMS)),
+            "ping": pa.array(np.repeat(np.arange(first, first + n), BEAMS)),
             "beam": pa.array(np.tile(np.arange(1, BEAMS + 1, dtype=np.int32), n)),
             "beam_angle": pa.array(angle.ravel()),
             "depth": pa.array(np.round(depth.ravel(), 3)),
@@ -127,7 +133,7 @@ def write_log(path: Path, soundings: int, jitter: float = 0.0, group: int = GROU
             writer = writer or pq.ParquetWriter(path, schema, compression="zstd")
             gathered.append(table)
             rows = sum(map(len, gathered))
-            if rows >= group or start + n == pings:
+            if rows >= group or first + n == pings:
                 writer.write_table(pa.concat_tables(gathered), row_group_size=group)
                 gathered = []
     if path.suffix != ".csv" and writer is not None:
