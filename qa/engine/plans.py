@@ -133,6 +133,13 @@ class _Missing(Exception):
         self.had = had
         super().__init__(", ".join(self.names))
 
+    def again(self) -> _Missing:
+        """The same, to be kept or raised later: it does not hold on to the frames that this one passed through.
+
+        Frames hold the line that is read. In a circle with an exception they would keep it in memory for long.
+        """
+        return _Missing(self.names, self.cyclic, self.had)
+
 
 def grain_of(*grains: Grain) -> Grain:
     """The finest of some grains.
@@ -159,7 +166,7 @@ class Resolver:
         if key in self.nodes:
             return self.nodes[key]
         if key in self.failed:
-            raise self.failed[key]
+            raise self.failed[key].again()
         if key in self.open:
             raise _Missing((key,), cyclic=True)
         self.open.append(key)
@@ -167,7 +174,7 @@ class Resolver:
             node = self._found(key)
         except _Missing as missing:
             if not missing.cyclic:
-                self.failed[key] = missing
+                self.failed[key] = missing.again()
             raise
         finally:
             self.open.pop()
@@ -207,7 +214,7 @@ class Resolver:
                 try:
                     node = self._by_recipe(key, recipe)
                 except _Missing as error:
-                    missing.append(error)
+                    missing.append(error.again())
                     continue
                 if recipe.first and not any(c.way == "logged" for c in candidates):
                     return node
@@ -389,12 +396,12 @@ class Resolver:
                 try:
                     node = self._by_recipe(key, recipe)
                 except _Missing as error:
-                    missing = missing or error
+                    missing = missing or error.again()
                     continue
                 if best is None or _RANK[node.origin] < _RANK[best.origin]:
                     best = node
         if best is None:
-            raise missing or _Missing((inner,))
+            raise _Missing((inner,)) if missing is None else missing.again()
         return best
 
     def _made(self) -> Node:

@@ -14,7 +14,7 @@ import numpy as np
 import pyarrow as pa
 from numpy.typing import NDArray
 
-IN_MEMORY = 1 << 26
+IN_MEMORY = 1 << 24
 """Bytes that stay in memory."""
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -43,21 +43,14 @@ def _damaged(where: str, problem: BaseException) -> InputError:
     )
 
 
-def _flat_fields(schema: pa.Schema) -> list[tuple[str, str, pa.Field]]:
+def _flat_fields(fields: Iterable[pa.Field], path: str = "") -> Iterator[tuple[str, str, pa.Field]]:
     """Leaf columns as (dotted path, own name, field); records are opened, lists are not."""
-    found: list[tuple[str, str, pa.Field]] = []
-
-    def walk(field: pa.Field, path: str) -> None:
+    for field in fields:
         if pa.types.is_struct(field.type):
-            for i in range(field.type.num_fields):
-                child = field.type.field(i)
-                walk(child, f"{path}.{child.name}")
+            inner = [field.type.field(i) for i in range(field.type.num_fields)]
+            yield from _flat_fields(inner, f"{path}{field.name}.")
         else:
-            found.append((path, field.name, field))
-
-    for field in schema:
-        walk(field, field.name)
-    return found
+            yield f"{path}{field.name}", field.name, field
 
 
 def _units(field: pa.Field) -> str:
@@ -89,7 +82,7 @@ class TableSource:
                 self._check_values()
             else:
                 self._open_arrow(magic)
-            fields = _flat_fields(self.schema)
+            fields = list(_flat_fields(self.schema))
             # A damaged name of a time zone shows only when it is asked for.
             [f.type.tz for _, _, f in fields if pa.types.is_timestamp(f.type)]
         except InputError:
