@@ -339,9 +339,12 @@ def measured(command: list[str]) -> tuple[str, float, float]:
 
 
 def _held(process: psutil.Process) -> int:
+    """Memory of a process; what it shares with others counts by its share, where the system tells."""
     try:
+        if sys.platform == "linux":
+            return int(process.memory_full_info().pss)
         return int(process.memory_info().rss)
-    except psutil.NoSuchProcess:
+    except (psutil.NoSuchProcess, psutil.AccessDenied):
         return 0
 
 

@@ -20,7 +20,7 @@ import bench
 
 LINE = 20_000_000
 SIZES = (100_000, 1_000_000, 10_000_000, 20_000_000, 200_000_000, 1_000_000_000)
-FILES, EACH = 8, 2_500_000
+FILES, EACH = 8, 10_000_000
 
 
 def child(folder: Path, survey: Path, workers: int) -> None:
