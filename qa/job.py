@@ -15,7 +15,7 @@ import traceback
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, replace
-from functools import lru_cache
+from functools import lru_cache, partial
 from pathlib import Path
 from typing import Any, Literal, NoReturn
 
@@ -35,7 +35,15 @@ from qa.executors import (
 from qa.ingest import MET_BEFORE, DayChoice, LineTask, open_line, plan_logs
 from qa.ingest.casts import read_cast
 from qa.kept import Content, Kept
-from qa.kept_lines import contents, identity, keep, line_key, recall
+from qa.kept_lines import (
+    contents,
+    identity,
+    keep,
+    kept_page,
+    line_key,
+    recall,
+    remembered,
+)
 from qa.model.cast import Cast
 from qa.model.errors import InputError, OutputError, PingworthyError
 from qa.model.findings import (
@@ -203,7 +211,7 @@ def audit(
     cast_of(facts)
     _check_parts(choice, facts)
     target = None if out is None else checked_target(Path(out))
-    plan = plan_logs(paths, facts, day)
+    plan = plan_logs(paths, facts, day, None if kept is None else partial(remembered, kept))
     with _folder_beside(target) as folder:
         survey_there, sheet_there = _absolute(facts), choice.absolute()
         jobs = [
@@ -221,7 +229,8 @@ def audit(
         )
         if folder is not None and target is not None:
             artifacts = [o.artifacts for o in outcomes if o.artifacts is not None]
-            write_outputs(findings, artifacts, _rejected(outcomes), folder, pages)
+            put_page = None if kept is None else partial(kept_page, kept)
+            write_outputs(findings, artifacts, _rejected(outcomes), folder, pages, put_page)
             _move_into_place(folder, target)
     return findings
 

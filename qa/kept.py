@@ -35,6 +35,10 @@ _TAG_TEXT = "Signature: 8a477f597d28d172789f06886806bc55\n# Kept by pingworthy; 
 _HEAD = b"pingworthy kept 1\n"
 _RECORD, _SEEN, _UNFINISHED = ".record", ".seen", ".part"
 _OLD = 3600.0
+_PLAIN = {
+    ("fractions", "Fraction"),
+    *(("builtins", name) for name in ("set", "frozenset", "slice", "complex")),
+}
 _NUMPY = {"_reconstruct", "_frombuffer", "ndarray", "dtype", "scalar"}
 
 
@@ -119,7 +123,13 @@ class Kept:
         return found
 
     def get(self, key: str, into: Path | None = None) -> Any:
-        """The record of a key, or None; files that belong to it are put into a folder under their own names."""
+        """A line's record, or None; files that belong to it are put into a folder under their own names."""
+        found = self.look(key, into)
+        self.taken += found is not None
+        return found
+
+    def look(self, key: str, into: Path | None = None) -> Any:
+        """As :meth:`get`, for a record that is not of a line and does not count as one."""
         try:
             raw = (self.folder / (key + _RECORD)).read_bytes()
             head, digest, content = raw.split(b"\n", 2)
@@ -140,13 +150,17 @@ class Kept:
             return None
         except (KeyError, pickle.UnpicklingError):
             return None
-        self.taken += 1
         return value
 
     def put(self, key: str, value: Any, files: Mapping[str, Path] | None = None) -> None:
-        """Write a record, and with it files that shall not be changed afterwards, by the names to find them under."""
+        """Write a line's record, and files that shall not be changed afterwards, by the names to find them under."""
+        if self.store(key, value, files):
+            self.added += 1
+
+    def store(self, key: str, value: Any, files: Mapping[str, Path] | None = None) -> bool:
+        """As :meth:`put`, for a record that is not of a line; tells whether it was written."""
         if self.trouble:
-            return
+            return False
         with self._writing():
             hashes = {}
             for name, path in (files or {}).items():
@@ -159,12 +173,14 @@ class Kept:
             content = pickle.dumps((value, hashes), protocol=5)
             digest = hashlib.sha256(content).hexdigest().encode()
             self._write(self.folder / (key + _RECORD), _HEAD + digest + b"\n" + content)
-            self.added += 1
+            return True
+        return False
 
     def size(self) -> tuple[int, int]:
-        """Records, and bytes of all files."""
+        """Lines' records, and bytes of all files. A record that is not of a line has a word and a hyphen before its key."""
         found = self._files()
-        return sum(p.suffix == _RECORD for p, _, _ in found), sum(size for _, size, _ in found)
+        lines = sum(p.suffix == _RECORD and "-" not in p.name for p, _, _ in found)
+        return lines, sum(size for _, size, _ in found)
 
     def clear(self) -> int:
         """Remove every record, and nothing that is not of this program; returns the bytes freed."""
@@ -268,14 +284,12 @@ def _removed(path: Path, size: int) -> int:
 
 
 class _Reader(pickle.Unpickler):
-    """Reads records made of this program's own records, arrays, paths and dates, and refuses everything else."""
+    """Reads records made of this program's own records, arrays, fractions, paths and dates, and refuses the rest."""
 
     def find_class(self, module: str, name: str) -> Any:
         own = module.startswith("qa.")
         numpy = module.split(".")[0] == "numpy" and name in _NUMPY
-        plain = module.split(".")[0] in ("pathlib", "datetime") or (
-            (module, name) in {("builtins", n) for n in ("set", "frozenset", "slice", "complex")}
-        )
+        plain = module.split(".")[0] in ("pathlib", "datetime") or (module, name) in _PLAIN
         if not (own or numpy or plain):
             raise pickle.UnpicklingError(f"{module}.{name} does not belong into a record")
         found = super().find_class(module, name)

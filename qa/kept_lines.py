@@ -4,23 +4,24 @@ from __future__ import annotations
 
 import datetime as dt
 import shutil
+import time
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from qa.fingerprints import fingerprint, of_program
-from qa.kept import Content, Kept
+from qa.kept import SETTLED, Content, Kept
 from qa.model.cast import Cast
 from qa.model.survey_file import SurveyFile
-from qa.report import renumbered
+from qa.report import renumbered, write_text
 
 if TYPE_CHECKING:
     from qa.job import LineJob, LineOutcome
 
 CastOf = Callable[[SurveyFile], Cast | None]
-_FIGURES, _PINGS = "figures", "pings"
+_FIGURES, _PINGS, _PAGE, _FILE = "figures", "pings", "page", "file"
 
 
 def contents(kept: Kept, paths: Sequence[Path], threads: int) -> dict[Path, Content]:
@@ -64,6 +65,37 @@ def line_key(job: LineJob, known: Mapping[Path, Content], cast_of: CastOf) -> st
         None if job.sheet.python is None else job.sheet.python.sha256,
         job.folder is not None,
     )
+
+
+def kept_page(kept: Kept, path: Path, inputs: bytes, make: Callable[[], str]) -> None:
+    """Put a line's page to a path: one that was made from the same before, or a new one."""
+    key = f"{_PAGE}-{fingerprint(of_program(), inputs)}"
+    if kept.look(key, path.parent) is None:
+        write_text(path, make())
+        kept.store(key, _PAGE, {_PAGE: path})
+    else:
+        (path.parent / _PAGE).replace(path)
+
+
+def remembered(kept: Kept, path: Path, about: tuple[object, ...], make: Callable[[], Any]) -> Any:
+    """What was found out of a file and depends on it and on ``about`` alone, as long as the file stays as it is.
+
+    A file is the same if its size and time of change are. With ``rehash`` it is looked at again in any case.
+    """
+    try:
+        now = path.stat()
+    except OSError:
+        return make()
+    stamp = (now.st_size, now.st_mtime_ns)
+    key = f"{_FILE}-{fingerprint(of_program(), path.resolve(), about)}"
+    if not kept.rehash:
+        before = kept.look(key)
+        if before is not None and before[0] == stamp:
+            return before[1]
+    found = make()
+    if time.time_ns() - now.st_mtime_ns > SETTLED and Content("", *stamp).still(path):
+        kept.store(key, (stamp, found))
+    return found
 
 
 def identity(key: str) -> str:

@@ -16,7 +16,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from qa import kept_lines
+from qa import job, kept_lines
 from qa.fingerprints import fingerprint, of_program
 from qa.ingest import plan_logs
 from qa.job import audit
@@ -54,13 +54,15 @@ class Again:
         self.folder, self.logs = folder, logs
         self.survey: Path | None = None
         self.limits: dict[str, str] = dict(LIMITS)
+        self.pages: Any = "auto"
 
     def __call__(self, **options: Any) -> tuple[int, dict[str, bytes]]:
         """Lines taken, and the files written; they are those of an audit that keeps nothing."""
         kept = Kept(self.folder / "kept", **options)
         with_kept, without = self.folder / "with", self.folder / "without"
-        audit(self.logs, self.survey, out=with_kept, limits=self.limits, kept=kept, workers=1)
-        audit(self.logs, self.survey, out=without, limits=self.limits, workers=1)
+        alike: dict[str, Any] = {"limits": self.limits, "workers": 1, "pages": self.pages}
+        audit(self.logs, self.survey, out=with_kept, kept=kept, **alike)
+        audit(self.logs, self.survey, out=without, **alike)
         assert not kept.trouble
         assert files_of(with_kept) == files_of(without)
         return kept.taken, files_of(with_kept)
@@ -86,6 +88,92 @@ def test_a_new_line_among_others_is_computed_alone(again: Again) -> None:
     taken, files = again()
     assert taken == LINES, "though every other line has another number now"
     assert b"L0004" in files["report.html"]
+
+
+@pytest.fixture
+def made(monkeypatch: pytest.MonkeyPatch) -> list[str]:
+    """What was rendered or looked at for an audit that keeps, rather than taken."""
+    found: list[str] = []
+    kept_page, remembered = kept_lines.kept_page, kept_lines.remembered
+
+    def page(kept: Kept, path: Path, inputs: bytes, make: Any) -> None:
+        kept_page(kept, path, inputs, lambda: found.append(path.name) or make())
+
+    def file(kept: Kept, path: Path, about: Any, make: Any) -> Any:
+        return remembered(kept, path, about, lambda: found.append(path.name) or make())
+
+    monkeypatch.setattr(job, "kept_page", page)
+    monkeypatch.setattr(job, "remembered", file)
+    return found
+
+
+def test_pages_of_unchanged_lines_are_not_rendered_again(again: Again, made: list[str]) -> None:
+    again.pages = "many"
+    again()
+    assert {f"{n:04d}.html" for n in (1, 2, 3)} <= set(made)
+    made.clear()
+    _, files = again()
+    assert made == []
+    assert {"lines/0001.html", "lines/0003.html"} <= {name.replace(os.sep, "/") for name in files}
+    write_line(again.logs / "line_4.csv", 4)
+    again()
+    # The line before the new one has a link to it now.
+    assert made == ["line_4.csv", "0003.html", "0004.html"]
+
+
+def test_pages_follow_their_lines_to_other_numbers(again: Again, made: list[str]) -> None:
+    again.pages = "many"
+    again()
+    made.clear()
+    write_line(again.logs / "line_0.csv", 0)
+    assert again()[0] == LINES
+    assert made == ["line_0.csv", *(f"{n:04d}.html" for n in (1, 2, 3, 4))]
+
+
+def test_pages_are_rendered_again_where_the_titles_of_rules_change(
+    again: Again, made: list[str], tmp_path: Path
+) -> None:
+    again.pages = "many"
+    again()
+    again.limits = dict(LIMITS, target_size="0.06 m")
+    made.clear()
+    again()
+    assert made == [f"{n:04d}.html" for n in (1, 2, 3)]
+
+
+def test_a_page_that_was_damaged_is_rendered_again(
+    again: Again, made: list[str], tmp_path: Path
+) -> None:
+    again.pages = "many"
+    again()
+    pages = sorted((tmp_path / "kept").glob("page-*.kept"))
+    assert len(pages) == LINES
+    text = pages[0].read_bytes()
+    pages[0].unlink()
+    pages[0].write_bytes(text.replace(b"<h1>", b"<h2>"))
+    made.clear()
+    again()
+    assert len(made) == 1
+
+
+def test_files_that_did_not_change_are_not_looked_at_again(
+    again: Again, made: list[str], tmp_path: Path
+) -> None:
+    again()
+    made.clear()
+    again()
+    assert made == []
+    os.utime(again.logs / "line_2.csv", (1e9, 1e9))
+    again()
+    assert made == ["line_2.csv"]
+    made.clear()
+    again(rehash=True)
+    assert made == ["line_1.csv", "line_2.csv", "line_3.csv"]
+    made.clear()
+    again.survey = tmp_path / "survey.toml"
+    again.survey.write_text("[survey]\ntime_zone = 'Europe/Lisbon'\n", encoding="utf-8")
+    again()
+    assert made == ["line_1.csv", "line_2.csv", "line_3.csv"]
 
 
 def test_a_changed_log_is_computed_again(again: Again) -> None:

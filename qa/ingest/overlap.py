@@ -6,6 +6,7 @@ found in the earlier one; files that follow one another cost one look at their e
 
 from __future__ import annotations
 
+import itertools
 import zlib
 from collections.abc import Iterator, Sequence
 
@@ -24,13 +25,17 @@ _HEAD_ROWS = 4096
 Digests = NDArray[np.uint64]
 
 
-def met_before(probes: Sequence[FileProbe]) -> dict[int, tuple[str, Integers]]:
+def met_before(
+    probes: Sequence[FileProbe], spans: Sequence[tuple[int, int] | None]
+) -> dict[int, tuple[str, Integers]]:
     """Rows of later files that stand, value for value, in an earlier one.
 
     Parameters
     ----------
     probes : sequence of FileProbe
         Files that are lines of their own, in the order in which they count.
+    spans : sequence of (int, int) or None
+        What :func:`time_span` tells of each.
 
     Returns
     -------
@@ -39,7 +44,6 @@ def met_before(probes: Sequence[FileProbe]) -> dict[int, tuple[str, Integers]]:
     """
     if len(probes) < 2:
         return {}
-    spans = [_span(probe) for probe in probes]
     found: dict[int, tuple[str, Integers]] = {}
     order = sorted(
         (i for i, span in enumerate(spans) if span is not None), key=lambda i: (spans[i], i)
@@ -133,10 +137,11 @@ def _digests(rows: Rows, names: Names) -> Digests:
     return total
 
 
-def _span(probe: FileProbe) -> tuple[int, int] | None:
-    """First and last time, as far as the ends of the file tell; the first alone where its end cannot be reached."""
-    if probe.times.rolls_over:
-        return None
+def time_span(probe: FileProbe) -> tuple[int, int] | None:
+    """First and last time, as far as the ends of the file tell; the first alone where its end cannot be reached.
+
+    Where seconds count from midnight the last depends on all before, and the file's times are read whole.
+    """
     try:
         names = Names()
         head = next(_head(probe, names, frozenset()), None)
@@ -165,6 +170,9 @@ def _head(probe: FileProbe, names: Names, wanted: frozenset[str] | None = None) 
 
 def _tail(probe: FileProbe, names: Names) -> Iterator[Rows]:
     reader = RowReader(probe, names, frozenset())
+    if probe.times.rolls_over:
+        yield from reader.batches()
+        return
     opened = probe.open()
     if isinstance(opened, TextSource):
         if opened.seekable and probe.size > _HEAD:
@@ -187,6 +195,10 @@ def _groups(
 def _around(probe: FileProbe, time: int, names: Names) -> Iterator[Rows]:
     """Rows of a file about a time, its times taken to rise; from its head where its middle cannot be reached."""
     reader = RowReader(probe, names)
+    if probe.times.rolls_over:
+        met = (rows for rows in reader.batches() if len(rows) and int(rows.time.max()) >= time)
+        yield from itertools.islice(met, 2)
+        return
     opened = probe.open()
     if isinstance(opened, TextSource):
         if not opened.seekable or probe.size <= _HEAD:

@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import glob
 import re
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path, PurePosixPath
+from typing import Any
 
 import numpy as np
 
 from qa.ingest.line_log import DayChoice, FilePart, OpenedLine
-from qa.ingest.overlap import met_before
+from qa.ingest.overlap import met_before, time_span
 from qa.ingest.probe import FileProbe, probe
 from qa.ingest.rows import Integers, Names, RowReader, Stretch
 from qa.model.errors import InputError
@@ -44,8 +46,15 @@ class LogPlan:
     inputs: tuple[InputFile, ...]
 
 
+Remembered = Callable[[Path, tuple[object, ...], Callable[[], Any]], Any]
+"""Takes a file, what else counts, and what finds something out of the file; gives what it finds, or found before."""
+
+
 def plan_logs(
-    logs: Sequence[str | Path], survey: SurveyFile, day: DayChoice | None = None
+    logs: Sequence[str | Path],
+    survey: SurveyFile,
+    day: DayChoice | None = None,
+    remembered: Remembered | None = None,
 ) -> LogPlan:
     """Find the log files and what they are, and make lines of them.
 
@@ -56,6 +65,8 @@ def plan_logs(
     survey : SurveyFile
     day : DayChoice, optional
         Only pings of this day are in scope.
+    remembered : callable, optional
+        What files are is asked of it.
 
     Raises
     ------
@@ -64,12 +75,23 @@ def plan_logs(
     """
     found = _files(logs)
     probes: list[tuple[FileProbe, SurveyFile]] = []
+    spans: dict[str, tuple[int, int] | None] = {}
     failed: list[InputFile] = []
     errors: list[InputError] = []
     for shown, path in found:
         own = survey.for_log(path)
         try:
-            probes.append((probe(path, shown, own, _folder_values(path)), own))
+            folder_values = _folder_values(path)
+            look = partial(_looked_at, path, shown, own, folder_values, len(found) > 1)
+            if remembered is None:
+                found_probe, span = look()
+            else:
+                facts = replace(own, path=None, sha256="", name="", sheet="", limits={}, parts=())
+                found_probe, span = remembered(
+                    path, (shown, facts, folder_values, len(found) > 1), look
+                )
+            probes.append((found_probe, own))
+            spans[shown] = span
         except InputError as error:
             failed.append(InputFile(shown, error=str(error)))
             errors.append(error)
@@ -85,7 +107,8 @@ def plan_logs(
     for item in probes:
         by_source[item[1].lines.source].append(item)
     names = _line_names([p.shown for p, _ in by_source["file"]])
-    met = met_before([p for p, _ in by_source["file"]])
+    of_files = [p for p, _ in by_source["file"]]
+    met = met_before(of_files, [spans[p.shown] for p in of_files])
     for at, ((own_probe, _), name) in enumerate(zip(by_source["file"], names, strict=True)):
         part = FilePart(own_probe)
         if at in met:
@@ -96,6 +119,14 @@ def plan_logs(
     order = {shown: i for i, (shown, _) in enumerate(found)}
     lines.sort(key=lambda line: (order[line.files[0]], natural(line.name)))
     return LogPlan(tuple(lines), tuple(failed))
+
+
+def _looked_at(
+    path: Path, shown: str, survey: SurveyFile, folder_values: Mapping[str, str], several: bool
+) -> tuple[FileProbe, tuple[int, int] | None]:
+    """What a file is, and its first and last time if it is one of several that are lines by their names."""
+    found = probe(path, shown, survey, folder_values)
+    return found, time_span(found) if several and survey.lines.source == "file" else None
 
 
 def _stretch(numbers: Integers) -> Stretch:

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import json
 import shutil
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import Literal
 
@@ -15,6 +16,7 @@ from qa.report.lines import LineArtifacts
 from qa.report.pages import Report
 
 Pages = Literal["auto", "one", "many"]
+PutPage = Callable[[Path, bytes, Callable[[], str]], None]
 PARTS = ("figures", "pings")
 
 
@@ -24,6 +26,7 @@ def write_outputs(
     rejected: Iterable[RejectedRow],
     folder: Path,
     pages: Pages = "auto",
+    put_page: PutPage | None = None,
 ) -> Path:
     """Write the report and the files beside it.
 
@@ -39,6 +42,8 @@ def write_outputs(
         Where to; the lines' own parts lie in it, and are gone afterwards.
     pages : "auto", "one" or "many"
         Whether lines stand in the report or on pages of their own; by their number if "auto".
+    put_page : callable, optional
+        Puts a line's page to a path: takes the path, all that the page is made from, and what makes it.
 
     Returns
     -------
@@ -48,7 +53,7 @@ def write_outputs(
     folder = Path(folder)
     artifacts = sorted(artifacts, key=lambda a: a.number)
     data = findings.to_dict()
-    _write(
+    write_text(
         folder / "findings.json",
         json.dumps(data, indent=1, ensure_ascii=False, allow_nan=False) + "\n",
     )
@@ -59,16 +64,21 @@ def write_outputs(
     ping_table.join_parts([a.pings for a in artifacts], folder / "pings.parquet")
     report = Report(findings, artifacts, pages, data)
     path = folder / "report.html"
-    _write(path, report.index())
+    write_text(path, report.index())
     if report.many:
         (folder / "lines").mkdir(exist_ok=True)
         for n in range(len(findings.lines)):
-            _write(folder / "lines" / f"{n + 1:04d}.html", report.line(n))
+            page = folder / "lines" / f"{n + 1:04d}.html"
+            if put_page is None:
+                write_text(page, report.line(n))
+            else:
+                put_page(page, report.line_inputs(n), partial(report.line, n))
     for part in PARTS:
         shutil.rmtree(folder / part, ignore_errors=True)
     return path
 
 
-def _write(path: Path, text: str) -> None:
+def write_text(path: Path, text: str) -> None:
+    """Write a file of the report."""
     # Names of files may hold bytes that are no text; what cannot be written is replaced, never lost with the file.
     path.write_bytes(text.encode("utf-8", "replace"))

@@ -149,6 +149,11 @@ class Report:
         zone = str(self.findings.survey.get("vessel_time_zone") or "UTC")
         context = self._common("")
         context.update(
+            findings=self.findings,
+            local=self.marker.local,
+            within=self.marker.within,
+            pair_within=self.marker.pair_within,
+            views=self.views,
             found=found,
             headline=found.headline(),
             period=_period(self.findings),
@@ -180,6 +185,24 @@ class Report:
         )
         return _environment().get_template("report.html.jinja").render(context)
 
+    def line_inputs(self, index: int) -> bytes:
+        """All that one line's own page is made from, but for the program: pages of the same are the same."""
+        line = self.findings.lines[index]
+        views = [self.views[n] for n in self.conclusions.sections_of.get(line.line, ())]
+        sections = self.marker.look_up("/sections")
+        artifact = self.artifacts[index]
+        figures = b"" if artifact is None else Path(artifact.figures).read_bytes()
+        about = [
+            index,
+            index + 1 < len(self.findings.lines),
+            self.many,
+            self.marker.look_up(f"/lines/{index}"),
+            [[v.at, v.anchor, v.figure, v.page, v.fails, sections[v.index]] for v in views],
+            {r.id: self.conclusions.titles.get(r.id) for r in (*line.rules,)},
+            {v.section.rule: self.conclusions.titles.get(v.section.rule) for v in views},
+        ]
+        return json.dumps(about).encode() + hashlib.sha256(figures).digest()
+
     def line(self, index: int) -> str:
         """One line's own page."""
         context = self._common("../report.html")
@@ -193,13 +216,8 @@ class Report:
 
     def _common(self, home: str) -> dict[str, Any]:
         return {
-            "findings": self.findings,
             "n": self.marker.number,
-            "local": self.marker.local,
             "pair": self.marker.pair,
-            "within": self.marker.within,
-            "pair_within": self.marker.pair_within,
-            "views": self.views,
             "titles": self.conclusions.titles,
             "home": home,
             "many": self.many,

@@ -64,6 +64,23 @@ def test_the_end_of_one_file_at_the_start_of_the_next(
     assert "a." in found["b"][2][0]
 
 
+def write_seconds_of_day(path: Path, first: int, count: int) -> Path:
+    """The date of the file's first row on each of them, and seconds that start again at midnight."""
+    rows = zip(range(first, first + count), depths(first, count).tolist(), strict=True)
+    text = "".join(f"2026-05-04,{(80_000 + i) % 86_400},{i},{d}\n" for i, d in rows)
+    path.write_text("date,seconds of day,ping,depth (m)\n" + text, encoding="utf-8")
+    return path
+
+
+def test_files_whose_seconds_start_again_at_midnight_are_compared(tmp_path: Path) -> None:
+    write_seconds_of_day(tmp_path / "a.csv", 0, 12_000)
+    write_seconds_of_day(tmp_path / "b.csv", 5_000, 12_000)
+    found = used(tmp_path)
+    assert found["a"][:2] == (12_000, 0)
+    assert found["b"][:2] == (5_000, 7_000)
+    assert "7000 rows stand in a.csv" in found["b"][2][0].replace(str(tmp_path) + "/", "")
+
+
 def test_a_copy_counts_for_nothing_and_is_no_failure(tmp_path: Path) -> None:
     first = write_csv(tmp_path / "line", 0, 500)
     copy = tmp_path / "copy of line.csv"
