@@ -383,9 +383,10 @@ def _run(
             progress(len(outcomes), len(jobs), job.task.name)
 
     keys: dict[int, str] = {}
+    named: dict[int, tuple[object, str]] = {}
     rest = []
     for job in jobs:
-        key = "" if kept is None else line_key(job, known, cast_of)
+        key = "" if kept is None else line_key(job, known, cast_of, named)
         if kept is not None and key:
             before = recall(job, kept, key)
             if before is not None:

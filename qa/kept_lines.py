@@ -39,17 +39,30 @@ def contents(kept: Kept, paths: Sequence[Path], threads: int) -> dict[Path, Cont
         return {path: known for path, known in found if known is not None}
 
 
-def line_key(job: LineJob, known: Mapping[Path, Content], cast_of: CastOf) -> str:
+def line_key(
+    job: LineJob,
+    known: Mapping[Path, Content],
+    cast_of: CastOf,
+    named: dict[int, tuple[object, str]],
+) -> str:
     """The key of a line's record; "" where a file's content is not known.
 
     It holds the program, the line's task (files, what their columns are, rows, day), the files' content, what the
     survey file says of this log, the sheet with its limits, the cast, and the user's own quantities. The name of the
-    survey, its other parts and the line's number do not count.
+    survey, its other parts and the line's number do not count. What lines of one part of the survey have in common is
+    named once, and remembered in ``named``.
     """
     paths = [Path(part.probe.path) for part in job.task.parts]
     if not all(path in known for path in paths):
         return ""
     own = job.survey.for_log(paths[0])
+    # The record itself is held, so that no other can come to stand at its place.
+    if id(own) not in named:
+        named[id(own)] = own, _in_common(job, own, cast_of)
+    return fingerprint(named[id(own)][1], job.task, [known[path].sha256 for path in paths])
+
+
+def _in_common(job: LineJob, own: SurveyFile, cast_of: CastOf) -> str:
     sheet = job.sheet.load(own)
     limits = [
         (x.name, x.text, str(x.unit), x.about, x.source, x.origin) for x in sheet.limits.values()
@@ -57,8 +70,6 @@ def line_key(job: LineJob, known: Mapping[Path, Content], cast_of: CastOf) -> st
     said = replace(own, path=None, sha256="", name="", sheet="", limits={}, parts=(), profile=None)
     return fingerprint(
         of_program(),
-        job.task,
-        [known[path].sha256 for path in paths],
         said,
         cast_of(own),
         (sheet.name, sheet.sha256, sheet.extends, list(sheet.rules), limits),

@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-import dataclasses
-import json
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
 import numpy as np
 
+from qa.model.json_text import json_text, plain
 from qa.model.log import Floats, RejectedRow
 
 SCHEMA_VERSION = "1"
@@ -219,12 +217,12 @@ class Findings:
 
     def to_dict(self) -> dict[str, Any]:
         """Plain lists, dicts, texts and numbers; None where a number is not known."""
-        plain: dict[str, Any] = _plain(dataclasses.asdict(self))
-        return plain
+        found: dict[str, Any] = plain(self)
+        return found
 
     def to_json(self) -> str:
         """The same text each time for the same findings."""
-        return json.dumps(self.to_dict(), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+        return json_text(self.to_dict())
 
 
 @dataclass(slots=True)
@@ -276,13 +274,3 @@ class LineResult:
     inputs: tuple[InputFile, ...] = ()
     assumptions: tuple[Assumption, ...] = ()
     limit_ranges: dict[str, tuple[float, float]] = field(default_factory=dict)
-
-
-def _plain(value: Any) -> Any:
-    if isinstance(value, float):
-        return value if math.isfinite(value) else None
-    if isinstance(value, Mapping):
-        return {str(k): _plain(v) for k, v in value.items()}
-    if isinstance(value, list | tuple):
-        return [_plain(v) for v in value]
-    return value

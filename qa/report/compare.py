@@ -15,6 +15,7 @@ import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from qa.model.errors import InputError
+from qa.model.json_text import json_text
 from qa.model.log import Floats
 from qa.report import numbers, pages, tracks
 from qa.report.tracks import EARTH, Track
@@ -144,7 +145,7 @@ def compare_audits(
     if out is not None:
         target = Path(out)
         target.mkdir(parents=True, exist_ok=True)
-        text = json.dumps(result.to_dict(), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+        text = json_text(result.to_dict())
         (target / "compare.json").write_bytes(text.encode("utf-8", "replace"))
         (target / "compare.html").write_bytes(page(result, old, new).encode("utf-8", "replace"))
     return result

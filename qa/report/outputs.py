@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
-import json
 import shutil
 from collections.abc import Callable, Iterable, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from functools import partial
 from pathlib import Path
 from typing import Literal
 
 from qa.model.findings import Findings
+from qa.model.json_text import json_text
 from qa.model.log import RejectedRow
 from qa.report import ping_table, tables
 from qa.report.lines import LineArtifacts
@@ -53,28 +54,33 @@ def write_outputs(
     folder = Path(folder)
     artifacts = sorted(artifacts, key=lambda a: a.number)
     data = findings.to_dict()
-    write_text(
-        folder / "findings.json",
-        json.dumps(data, indent=1, ensure_ascii=False, allow_nan=False) + "\n",
-    )
+    write_text(folder / "findings.json", json_text(data))
     tables.write_sections(findings, folder / "sections.csv")
     tables.write_rejected(rejected, folder / "rejected.csv")
     places = {key: along for a in artifacts for key, along in a.places.items()}
     tables.write_rerun(findings, places, folder / "rerun.geojson")
-    ping_table.join_parts([a.pings for a in artifacts], folder / "pings.parquet")
-    report = Report(findings, artifacts, pages, data)
+    with ThreadPoolExecutor(1) as pool:
+        # Written outside of Python's own lock, for the most part: pages are made meanwhile.
+        pings = [a.pings for a in artifacts]
+        joined = pool.submit(ping_table.join_parts, pings, folder / "pings.parquet")
+        path = _write_pages(Report(findings, artifacts, pages, data), folder, put_page)
+        joined.result()
+    for part in PARTS:
+        shutil.rmtree(folder / part, ignore_errors=True)
+    return path
+
+
+def _write_pages(report: Report, folder: Path, put_page: PutPage | None) -> Path:
     path = folder / "report.html"
     write_text(path, report.index())
     if report.many:
         (folder / "lines").mkdir(exist_ok=True)
-        for n in range(len(findings.lines)):
+        for n in range(len(report.findings.lines)):
             page = folder / "lines" / f"{n + 1:04d}.html"
             if put_page is None:
                 write_text(page, report.line(n))
             else:
                 put_page(page, report.line_inputs(n), partial(report.line, n))
-    for part in PARTS:
-        shutil.rmtree(folder / part, ignore_errors=True)
     return path
 
 

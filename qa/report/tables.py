@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import csv
-import json
 from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import Any
 
 from qa.model.findings import Findings, Section
+from qa.model.json_text import json_text
 from qa.model.log import RejectedRow
 from qa.report.conclusions import fails
 from qa.report.tracks import Places
@@ -72,7 +72,7 @@ def write_rerun(findings: Findings, places: Mapping[str, Places], path: Path) ->
     if not positioned and not any(places.values()):
         return False
     collection = {"type": "FeatureCollection", "features": features}
-    text = json.dumps(collection, ensure_ascii=False, indent=1, allow_nan=False) + "\n"
+    text = json_text(collection)
     path.write_bytes(text.encode("utf-8", "replace"))
     return True
 
