@@ -95,6 +95,10 @@ def share_of_threads(budget: int, tasks: int) -> tuple[int, int]:
     return processes, max(1, budget // processes)
 
 
+_BESIDE = "KilledWorker"
+"""What a cluster raises for every task that was on a worker when it ended, for the second time or so."""
+
+
 def run_tasks(
     work: Callable[[Task], Result],
     tasks: Sequence[Task],
@@ -104,7 +108,8 @@ def run_tasks(
     """Run tasks on an executor, and hand out each with its result as it is done.
 
     Where the executor breaks, a new one takes the tasks that were under way one by one, so that the one that breaks
-    it is known; the rest goes on as before.
+    it is known; the rest goes on as before. So do several tasks in the end that a cluster gives up because the workers
+    that they were on ended: it may have been another's doing.
 
     Parameters
     ----------
@@ -117,6 +122,7 @@ def run_tasks(
         Takes a task that could not be run and why, and makes a result of that.
     """
     waiting = deque(tasks)
+    accused: list[tuple[Task, str]] = []
     while waiting:
         pool = factory()
         most = 2 * int(getattr(pool, "_max_workers", 0) or 0) or IN_FLIGHT
@@ -141,6 +147,9 @@ def run_tasks(
                         broken = True
                         continue
                     except Exception as error:
+                        if type(error).__name__ == _BESIDE:
+                            accused.append((flying.pop(future), f"{_BESIDE}: {error}"))
+                            continue
                         result = lost(flying[future], f"{type(error).__name__}: {error}")
                     yield flying.pop(future), result
         finally:
@@ -150,6 +159,10 @@ def run_tasks(
             if not suspects and waiting:
                 suspects = [waiting.popleft()]
             yield from _one_by_one(work, suspects, factory, lost)
+    if len(accused) == 1:
+        yield from ((task, lost(task, why)) for task, why in accused)
+    else:
+        yield from _one_by_one(work, [task for task, _ in accused], factory, lost)
 
 
 def _one_by_one(

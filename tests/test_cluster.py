@@ -73,6 +73,7 @@ def cluster(folder: Path, *of_worker: str) -> Iterator[str]:
             worker = started(
                 *("distributed.cli.dask_worker", address, "--host", "127.0.0.1"),
                 *("--nthreads", "1", "--no-dashboard", "--local-directory", str(folder)),
+                *("--death-timeout", "20"),
                 *of_worker,
                 folder=folder,
             )
@@ -83,7 +84,12 @@ def cluster(folder: Path, *of_worker: str) -> Iterator[str]:
         for process in reversed(running):
             process.terminate()
         for process in running:
-            process.wait(30)
+            try:
+                process.wait(20)
+            except subprocess.TimeoutExpired:
+                # A nanny that is just starting a worker anew may not hear; the worker ends without a scheduler.
+                process.kill()
+                process.wait(20)
 
 
 @pytest.fixture(scope="module")
