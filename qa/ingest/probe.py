@@ -24,7 +24,7 @@ from qa.ingest.table_source import (
     MAGIC_PARQUET,
     TableFormat,
     TableSource,
-    _is_list,
+    is_list,
 )
 from qa.ingest.text_source import RawBatch, TextFormat, TextSource, probe_text
 from qa.ingest.times import NoTimeError, TimePlan, plan_times
@@ -368,7 +368,7 @@ def _plausible(
     """Refuse numbers that cannot be in the unit that no unit would mean."""
     if binding.role not in _TOO_MUCH or binding.unit:
         return
-    if _is_list(values.type):
+    if is_list(values.type):
         values = values.flatten()
     numbers, _bad = number_of(values, decimal_comma)
     numbers = numbers[np.isfinite(numbers)].astype(np.float64)

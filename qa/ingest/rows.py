@@ -15,7 +15,7 @@ from qa.ingest.ahead import ahead
 from qa.ingest.names import Binding
 from qa.ingest.probe import SIDES, FileProbe
 from qa.ingest.proofs import NO_PROOF, Proof, counts_of, proven, unread
-from qa.ingest.table_source import TableSource
+from qa.ingest.table_source import TableSource, is_list
 from qa.ingest.text_source import RawBatch
 from qa.ingest.times import EARLIEST, LATEST, TimeState, convert_times
 from qa.ingest.values import (
@@ -28,6 +28,7 @@ from qa.ingest.values import (
     to_whole,
 )
 from qa.model.columns import COLUMNS
+from qa.model.errors import InputError
 from qa.model.log import KEPT_REJECTS, NO_TIME, FileAccount, RejectedRow
 
 Integers = NDArray[np.int64]
@@ -371,6 +372,14 @@ class RowReader:
                 self._count_missing(role, found)
                 wide.setdefault(role, {}).setdefault(binding.number, found)
             elif self.probe.layout == "list":
+                if not is_list(array.type):
+                    raise InputError(
+                        "A column of beams holds one value a row where others hold lists.",
+                        where=self.probe.shown,
+                        found=f'"{binding.source}" ({array.type})',
+                        expected="a list in each row",
+                        advice="Write the column under ignore in [columns] of the survey file, or export it as lists.",
+                    )
                 lists[role] = binding, _plain_text(array)
             elif role == "beam":
                 values = self._whole(binding, array, reasons)

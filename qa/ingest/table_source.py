@@ -153,7 +153,7 @@ class TableSource:
 
     def list_columns(self) -> list[str]:
         """Columns that hold a list in each row."""
-        return [p for p, f in self.fields.items() if _is_list(f.type)]
+        return [p for p, f in self.fields.items() if is_list(f.type)]
 
     def extremes(self, name: str, group: int) -> tuple[float, float] | None:
         """Least and greatest of a column of numbers or times in a part of which its statistics say that no cell is empty.
@@ -335,7 +335,8 @@ def _written(value: Any) -> str:
     return str(value)
 
 
-def _is_list(kind: pa.DataType) -> bool:
+def is_list(kind: pa.DataType) -> bool:
+    """Whether values of a type are lists."""
     return bool(
         pa.types.is_list(kind) or pa.types.is_large_list(kind) or pa.types.is_fixed_size_list(kind)
     )

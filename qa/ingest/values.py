@@ -154,6 +154,7 @@ def number_of(array: pa.Array, decimal_comma: bool) -> tuple[NDArray[Any], Mask 
     return np.asarray(floats.to_numpy(zero_copy_only=False)), None
 
 
+_LONGEST_POSITION = 40
 _POSITION = re.compile(
     r"""^\s*(?P<before>[NSEW])?\s*(?P<sign>[+-])?
     (?P<deg>\d{1,3}(?:[.,]\d+)?)\s*(?:[°ºd:\s]\s*
@@ -176,7 +177,9 @@ def degrees_of(text: str) -> float | None:
     >>> degrees_of("38 42 36 S"), degrees_of("38d42m36sN")
     (-38.71, 38.71)
     """
-    found = _POSITION.match(text)
+    # A position is short, and long runs of spaces would be tried in all ways that they can be shared out.
+    text = " ".join(text.split())
+    found = _POSITION.match(text) if len(text) <= _LONGEST_POSITION else None
     if found is None or (found["before"] and found["after"]):
         return None
     side = (found["before"] or found["after"] or "").upper()

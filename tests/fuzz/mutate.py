@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import gzip
+import math
 import random
 import struct
 import zlib
 from collections.abc import Callable
 
 import pyarrow as pa
+import pyarrow.parquet as pq
 
 from tests.fuzz.seeds import Seed, pack
 
@@ -242,6 +244,105 @@ def number_in(data: bytes, rng: random.Random) -> bytes:
     return bytes(out)
 
 
+def table_in(data: bytes) -> tuple[pa.Table, Callable[[pa.Table, random.Random], bytes]] | None:
+    """The table in a Parquet or Arrow file, and how to write such a file again; None where it is none any more."""
+    try:
+        if data[:4] == b"PAR1":
+            return pq.read_table(pa.BufferReader(data)), _as_parquet
+        if data[:6] == b"ARROW1":
+            return pa.ipc.open_file(pa.BufferReader(data)).read_all(), _as_file
+        return pa.ipc.open_stream(pa.BufferReader(data)).read_all(), _as_stream
+    except (pa.ArrowException, OSError, ValueError, KeyError, OverflowError, MemoryError):
+        return None
+
+
+def _as_parquet(table: pa.Table, rng: random.Random) -> bytes:
+    sink = pa.BufferOutputStream()
+    pq.write_table(
+        table,
+        sink,
+        row_group_size=rng.choice((1, 3, 7, 1000)),
+        compression=rng.choice(("none", "zstd", "snappy")),
+        use_dictionary=rng.random() < 0.7,
+        write_statistics=rng.random() < 0.8,
+        data_page_version=rng.choice(("1.0", "2.0")),
+    )
+    return bytes(sink.getvalue().to_pybytes())
+
+
+def _as_file(table: pa.Table, rng: random.Random) -> bytes:
+    sink = pa.BufferOutputStream()
+    with pa.ipc.new_file(sink, table.schema) as writer:
+        writer.write_table(table, max_chunksize=rng.choice((1, 5, 1000)))
+    return bytes(sink.getvalue().to_pybytes())
+
+
+def _as_stream(table: pa.Table, rng: random.Random) -> bytes:
+    sink = pa.BufferOutputStream()
+    with pa.ipc.new_stream(sink, table.schema) as writer:
+        writer.write_table(table, max_chunksize=rng.choice((1, 5, 1000)))
+    return bytes(sink.getvalue().to_pybytes())
+
+
+_NUMBERS = (0.0, -1.0, 1.0, -999.0, 99999.0, 1e308, 1e-320, math.nan, math.inf, -math.inf, None)
+_KINDS = (
+    *(pa.float32(), pa.float64(), pa.int8(), pa.int64(), pa.uint64(), pa.string(), pa.bool_()),
+    *(pa.decimal128(20, 3), pa.timestamp("s"), pa.timestamp("ns", "UTC"), pa.date32(), pa.null()),
+    *(pa.large_string(), pa.binary(), pa.dictionary(pa.int32(), pa.string()), pa.duration("us")),
+)
+
+
+def table_columns(data: bytes, rng: random.Random) -> bytes:
+    """Columns of a table change places, names, kinds and values, stand twice or are gone; rows too."""
+    found = table_in(data)
+    if found is None:
+        return data
+    table, written = found
+    for _ in range(rng.choice((1, 1, 2, 4))):
+        if not table.num_columns or not table.num_rows:
+            break
+        at, other = rng.randrange(table.num_columns), rng.randrange(table.num_columns)
+        field, column = table.schema.field(at), table.column(at)
+        way = rng.randrange(9)
+        try:
+            if way == 0:
+                names = list(table.schema.names)
+                names[at], names[other] = names[other], names[at]
+                table = table.rename_columns(names)
+            elif way == 1:
+                table = table.remove_column(at)
+            elif way == 2:
+                table = table.append_column(field, column)
+            elif way == 3:
+                names = list(table.schema.names)
+                names[at] = rng.choice(_NAMES)
+                table = table.rename_columns(names)
+            elif way == 4:
+                table = table.set_column(
+                    at, field.name, column.cast(rng.choice(_KINDS), safe=False)
+                )
+            elif way in (5, 6):
+                values = column.to_pylist()
+                for _ in range(rng.choice((1, 2, len(values)))):
+                    values[rng.randrange(len(values))] = rng.choice(_NUMBERS)
+                table = table.set_column(
+                    at, field.name, pa.array(values, field.type, from_pandas=False)
+                )
+            elif way == 7:
+                order = list(range(table.num_rows))
+                rng.shuffle(order)
+                table = table.take(pa.array(order))
+            else:
+                rows = [rng.randrange(table.num_rows) for _ in range(rng.choice((1, 5, 40)))]
+                table = pa.concat_tables([table, table.take(pa.array(rows))])
+        except (pa.ArrowException, ValueError, TypeError, OverflowError, KeyError):
+            continue
+    try:
+        return written(table, rng)
+    except (pa.ArrowException, ValueError, OSError):
+        return data
+
+
 ANY: tuple[Mutation, ...] = (
     flip_bytes,
     flip_bits,
@@ -267,7 +368,10 @@ TEXT: tuple[Mutation, ...] = (
     encode,
     separators,
 )
-BINARY: tuple[Mutation, ...] = (*ANY, footer, footer, number_in, number_in, flip_bytes)
+BINARY: tuple[Mutation, ...] = (
+    *(*ANY, footer, footer, number_in, number_in, flip_bytes),
+    *(table_columns, table_columns, table_columns, table_columns),
+)
 
 
 def unpack(data: bytes, how: str) -> bytes:

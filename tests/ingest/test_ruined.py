@@ -71,6 +71,16 @@ def test_spaces_without_end_between_columns(tmp_path: Path) -> None:
     assert account.rows_used == 12
 
 
+@pytest.mark.parametrize("what", [" ", " 7", "1:", "° "])
+def test_a_position_of_enormous_length(tmp_path: Path, what: str) -> None:
+    rows = [f"{time},38.5,-9.25,10" for time in TIMES]
+    rows[3] = f"{TIMES[3]},12{what * 3000}x,-9.25,10"
+    path = tmp_path / "log.csv"
+    path.write_text("time,latitude,longitude,depth (m)\n" + "\n".join(rows) + "\n", "utf-8")
+    (account,) = accounts(path)
+    assert (account.rows_used, account.rows_rejected) == (len(TIMES) - 1, 1)
+
+
 def test_a_units_row_longer_than_its_header(tmp_path: Path) -> None:
     content = rows("10.5,1").replace("\n", "\nUTC,m,m,m,m\n", 1).replace("depth", "depth,x")
     (account,) = accounts(text(tmp_path, content))
