@@ -324,24 +324,24 @@ def measured(command: list[str]) -> tuple[str, float, float]:
     """What a command prints, its seconds, and the most memory that it and its children held, in MB."""
     began = time.perf_counter()
     process = psutil.Popen(command, stdout=subprocess.PIPE, cwd=ROOT)
-    most = 0
+    most, family = 0, [process]
     while process.poll() is None:
         try:
             family = [process, *process.children(recursive=True)]
-            most = max(most, sum(_held(p) for p in family))
+            most = max(most, sum(_held(p, len(family)) for p in family))
         except psutil.NoSuchProcess:
             pass
-        time.sleep(0.02)
+        time.sleep(0.02 * len(family))
     text = process.stdout.read().decode("utf-8")
     if process.returncode:
         raise SystemExit(f"{command} ended with {process.returncode}")
     return text, time.perf_counter() - began, most / 1e6
 
 
-def _held(process: psutil.Process) -> int:
-    """Memory of a process; what it shares with others counts by its share, where the system tells."""
+def _held(process: psutil.Process, of: int) -> int:
+    """Memory of a process; what several share counts by their shares, where the system tells. To ask holds them up."""
     try:
-        if sys.platform == "linux":
+        if of > 1 and sys.platform == "linux":
             return int(process.memory_full_info().pss)
         return int(process.memory_info().rss)
     except (psutil.NoSuchProcess, psutil.AccessDenied):
