@@ -353,8 +353,10 @@ def race(path: Path, soundings: int, rounds: int, names: list[str]) -> None:
     seconds: dict[str, list[float]] = {n: [] for n in names}
     memory: dict[str, float] = dict.fromkeys(names, 0.0)
     numbers: dict[str, list[np.ndarray]] = {}
-    for _ in range(rounds):
-        for name in names:
+    for at in range(rounds):
+        # Who comes first has other conditions than who comes next: each has its turn at it.
+        turn = at % len(names)
+        for name in (*names[turn:], *names[:turn]):
             out = path.with_name("numbers.npz")
             out.unlink(missing_ok=True)
             command = [sys.executable, __file__, "--child", name, str(path), str(out)]
