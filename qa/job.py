@@ -473,7 +473,7 @@ def _together(
     outcomes = [o for o in outcomes if o.in_scope]
     lines = tuple(o.finding for o in outcomes)
     if not any(line.pings for line in lines):
-        _refuse(inputs, lines, day)
+        _refuse(inputs, outcomes, day)
     rules = tuple(_rule(sheet, rule, outcomes) for rule in sheet.rules)
     verdict: Verdict = "not assessed"
     if any(line.verdict == "out of spec" for line in lines):
@@ -533,11 +533,11 @@ def _together(
 
 
 def _refuse(
-    inputs: Sequence[InputFile], lines: Sequence[LineFinding], day: DayChoice | None
+    inputs: Sequence[InputFile], outcomes: Sequence[LineOutcome], day: DayChoice | None
 ) -> NoReturn:
     """No line has a ping: say why."""
     errors = list(dict.fromkeys(i.error for i in inputs if i.error))
-    failures = [line.error for line in lines if line.error and line.error not in errors]
+    failures = [o.finding.error for o in outcomes if o.finding.error and not o.input_error]
     if failures:
         raise RuntimeError(failures[0])
     if not errors and day is not None:

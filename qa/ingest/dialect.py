@@ -22,8 +22,7 @@ _TIMELIKE = re.compile(
 )
 
 
-_RULE = re.compile(r"^[\s|+]*(?:[-=_]{3,}[\s|+]*)+$")
-"""A line drawn under a header."""
+_BETWEEN_RULES = re.compile(r"[\s|+]+")
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,6 +97,12 @@ def find_encoding(head: bytes, where: str) -> tuple[str, int]:
     return "utf-8", 0
 
 
+def _is_rule(line: str) -> bool:
+    """Whether a line is one that is drawn under a header: strokes of three and more."""
+    strokes = [stroke for stroke in _BETWEEN_RULES.split(line) if stroke]
+    return bool(strokes) and all(len(s) >= 3 and not s.strip("-=_") for s in strokes)
+
+
 def split_line(line: str, separator: str) -> list[str]:
     """The cells of a line. Between spaces, a unit in brackets belongs to the name before it."""
     if separator == " ":
@@ -148,7 +153,7 @@ def find_dialect(
         for n, line in enumerate(lines[:4000])
         if line.strip()
         and not (comment and line.lstrip().startswith(comment))
-        and not _RULE.match(line)
+        and not _is_rule(line)
     ]
     if not data:
         raise InputError("The file holds no rows.", where=where, expected="a header and rows")

@@ -71,6 +71,15 @@ def test_spaces_without_end_between_columns(tmp_path: Path) -> None:
     assert account.rows_used == 12
 
 
+@pytest.mark.parametrize("what", ["-", "- ", "---|", "=+"])
+def test_a_line_under_the_header_that_does_not_end_as_one(tmp_path: Path, what: str) -> None:
+    rows = [f"{time},10" for time in TIMES]
+    path = tmp_path / "log.csv"
+    path.write_text(f"{what * 4000}x\ntime,depth (m)\n" + "\n".join(rows) + "\n", "utf-8")
+    (account,) = accounts(path)
+    assert account.rows_used == len(TIMES)
+
+
 @pytest.mark.parametrize("what", [" ", " 7", "1:", "° "])
 def test_a_position_of_enormous_length(tmp_path: Path, what: str) -> None:
     rows = [f"{time},38.5,-9.25,10" for time in TIMES]
