@@ -96,8 +96,12 @@ class TableSource:
             MemoryError,
         ) as problem:
             raise _damaged(where, problem) from None
-        self.fields = {path: field for path, _, field in fields}
-        self.own_names = {path: name for path, name, _ in fields}
+        # Of columns of one name the first counts, here as where their values are read.
+        self.fields: dict[str, pa.Field] = {}
+        self.own_names: dict[str, str] = {}
+        for name, own, field in fields:
+            self.fields.setdefault(name, field)
+            self.own_names.setdefault(name, own)
         self.nested = any("." in path and path not in self.schema.names for path in self.fields)
         if self.kind == "parquet" and (
             sum(self.groups) != self.length
@@ -343,8 +347,10 @@ def is_list(kind: pa.DataType) -> bool:
 
 
 def _leaf(batch: pa.RecordBatch, path: str) -> pa.Array:
-    if path in batch.schema.names:
-        array = batch.column(batch.schema.names.index(path))
+    # A record may bear the name of a column beside it.
+    own = [f.name == path and not pa.types.is_struct(f.type) for f in batch.schema]
+    if any(own):
+        array = batch.column(own.index(True))
     else:
         parts = path.split(".")
         # a name may hold dots itself: the longest head that is a column

@@ -188,6 +188,20 @@ def test_dictionaries_whose_indices_lead_elsewhere(tmp_path: Path) -> None:
         accounts(arrow(tmp_path, table, wrong))
 
 
+def test_a_record_of_the_name_of_a_column_beside_it(tmp_path: Path) -> None:
+    columns = [
+        pa.array(np.arange(12) * 1000 + 1_715_673_600_000, pa.timestamp("ms", "UTC")),
+        pa.array([{"frequency_khz": 200.0}] * 12),
+        pa.array(["A"] * 6 + ["B"] * 6),
+        pa.array(np.linspace(10, 11, 12)),
+    ]
+    table = pa.Table.from_arrays(columns, names=["time", "line", "line", "depth"])
+    pq.write_table(table, tmp_path / "log.parquet")
+    (account,) = accounts(tmp_path / "log.parquet")
+    assert account.rows_used == 12
+    assert any("names several lines" in note for note in account.notes)
+
+
 def test_statistics_that_would_end_the_process() -> None:
     """The file comes of the campaign: its size statistics disagree with its schema, which the library aborts on."""
     path = Path(__file__).resolve().parent.parent / "data" / "ruined" / "size_statistics.parquet"
