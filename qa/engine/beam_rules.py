@@ -9,11 +9,12 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from qa.engine.expressions import TOLERANCE, Comparison, Expression, judge
+from qa.engine.expressions import TOLERANCE, Expression, Judgement, holds, judge, judge_sides
 from qa.engine.reducers import Groups, nearest_beam
 from qa.model.log import Floats
 
 MOST_MISSES = 4000
+_ORDERINGS = ("<=", "<", ">=", ">")
 
 Integers = NDArray[np.int64]
 Mask = NDArray[np.bool_]
@@ -116,17 +117,24 @@ def judge_beams(
     accepted : ndarray of bool, optional
         Beams that count; all, if left out.
     """
-    comparisons = requirement.comparisons
-    if len(comparisons) == 1 and comparisons[0].operator in ("<=", "<", ">=", ">"):
-        comparison = comparisons[0]
-        left, right = comparison.left.run(values), comparison.right.run(values)
-        if groups.width and not isinstance(left, str) and not isinstance(right, str):
-            one_limit = not np.ndim(right) or np.shape(right)[-1] == 1
-            quick = _by_extremes if one_limit else _by_margins
-            found = quick(comparison.operator, left, right, groups, accepted)
-            if found is not None:
-                return found
-    return _one_by_one(requirement, values, groups, accepted)
+    if len(requirement.comparisons) != 1:
+        judged = judge(requirement, values)
+        return _one_by_one(judged, judged.margin, groups, accepted)
+    (comparison,) = requirement.comparisons
+    operator = comparison.operator
+    left, right = comparison.left.run(values), comparison.right.run(values)
+    ordering = operator in _ORDERINGS and not isinstance(left, str) and not isinstance(right, str)
+    one_limit = not np.ndim(right) or np.shape(right)[-1] == 1
+    if ordering and groups.width:
+        quick = _by_extremes if one_limit else _by_margins
+        found = quick(operator, left, right, groups, accepted)
+        if found is not None:
+            return found
+    judged = judge_sides(operator, left, right)
+    nearness = judged.margin
+    if ordering and one_limit:
+        nearness = _nearness(operator, judged)
+    return _one_by_one(judged, nearness, groups, accepted)
 
 
 def _by_extremes(
@@ -158,14 +166,15 @@ def _by_extremes(
         return None
     with np.errstate(invalid="ignore"):
         ahead = limit - value if below else value - limit
-    fails = known & ~_met(operator, ahead, size)
+    fails = known & ~holds(operator, ahead, TOLERANCE * size)
     missed = np.zeros(pings.shape, dtype=np.int64)
     missing = np.zeros(0, dtype=np.int64)
     if fails.any():
         rows = np.flatnonzero(fails)
         every = slice(None) if len(rows) == len(pings) else rows
         here, bound = groups.full(sides)[every], limit[every, None]
-        misses = ~_met(operator, bound - here if below else here - bound, size[every, None])
+        beyond = bound - here if below else here - bound
+        misses = ~holds(operator, beyond, TOLERANCE * size[every, None])
         if accepted is not None:
             misses &= groups.full(accepted)[every]
         missed[rows] = np.count_nonzero(misses, axis=1)
@@ -203,11 +212,11 @@ def _by_margins(
     places = pings, column
     value = np.where(known, groups.full(np.asarray(left, dtype=float))[places], np.nan)
     limit = np.where(known, groups.full(np.asarray(right, dtype=float))[places], np.nan)
-    fails = known & ~_met(operator, groups.full(ahead)[places], np.abs(limit))
+    fails = known & ~holds(operator, groups.full(ahead)[places], TOLERANCE * np.abs(limit))
     missed = np.zeros(pings.shape, dtype=np.int64)
     missing = np.zeros(0, dtype=np.int64)
     if fails.any():
-        misses = ~unknown & ~_met(operator, ahead, size)
+        misses = ~unknown & ~holds(operator, ahead, TOLERANCE * size)
         missed = groups.counted(misses)
         missing = np.flatnonzero(misses)
     worst = np.where(known, pings * groups.width + column, -1)
@@ -216,22 +225,13 @@ def _by_margins(
     )
 
 
-def _met(operator: str, ahead: Any, size: Any) -> Any:
-    slack = TOLERANCE * size
-    return ahead >= -slack if operator in ("<=", ">=") else ahead > slack
-
-
 def _one_by_one(
-    requirement: Expression, values: Mapping[str, Any], groups: Groups, accepted: Mask | None
+    judged: Judgement, nearness: Any, groups: Groups, accepted: Mask | None
 ) -> BatchOutcome:
-    judged = judge(requirement, values)
     known = np.asarray(judged.known)
     if accepted is not None:
         known = known & accepted
     missed = known & ~np.asarray(judged.met)
-    nearness: Any = judged.margin
-    if len(requirement.comparisons) == 1:
-        nearness = _nearness(requirement.comparisons[0], judged.value, judged.limit, nearness)
     worst = nearest_beam(np.where(known, 0.0, np.nan), groups, nearness)
     there = worst >= 0
     places = groups.places(worst[there])
@@ -252,15 +252,12 @@ def _one_by_one(
     )
 
 
-def _nearness(comparison: Comparison, left: Any, right: Any, margin: Any) -> Any:
+def _nearness(operator: str, judged: Judgement) -> Any:
     """What tells the beam of a ping that is nearest to failing: its left side, where the right is an ordinary number.
 
     The same beam is then found by :func:`_by_extremes`, however margins are rounded.
     """
-    if comparison.operator not in ("<=", "<", ">=", ">"):
-        return margin
-    size = np.abs(np.asarray(right, dtype=float))
-    if size.ndim and size.shape[-1] != 1:
-        return margin
+    size = np.abs(np.asarray(judged.limit, dtype=float))
     ordinary = (size > 0.0) & (size < np.inf)
-    return np.where(ordinary, -left if comparison.operator in ("<=", "<") else left, margin)
+    left = -judged.value if operator in ("<=", "<") else judged.value
+    return np.where(ordinary, left, judged.margin)

@@ -601,33 +601,42 @@ def judge_comparison(comparison: Comparison, values: Values) -> Judgement:
 
     The margin is how far the left side keeps from the right, as a share of the right: negative is a miss.
     """
-    left, right = comparison.left.run(values), comparison.right.run(values)
+    return judge_sides(
+        comparison.operator, comparison.left.run(values), comparison.right.run(values)
+    )
+
+
+def holds(operator: str, ahead: Any, slack: Any) -> Any:
+    """Whether one side keeps so far from the other as an ordering asks, but for a last digit of ``slack``."""
+    return ahead >= -slack if operator in ("<=", ">=") else ahead > slack
+
+
+def judge_sides(operator: str, left: Any, right: Any) -> Judgement:
+    """As :func:`judge_comparison`, of sides that are computed."""
     if isinstance(left, str) or isinstance(right, str):
         same = _as_logged(left) == _as_logged(right)
-        met = same if comparison.operator == "==" else not same
+        met = same if operator == "==" else not same
         return Judgement(True, met, np.nan, np.nan, 0.0 if met else -1.0)
     with np.errstate(all="ignore"):
         known = ~np.isnan(left) if np.ndim(right) == 0 and right == right else None
         if known is None:
             known = ~(np.isnan(left) | np.isnan(right))
         size = np.abs(np.asarray(right))
-        if comparison.operator in ("==", "!="):
+        if operator in ("==", "!="):
             same = np.abs(left - right) <= TOLERANCE * size
-            met = same if comparison.operator == "==" else ~same
+            met = same if operator == "==" else ~same
             return Judgement(
                 known, met, left, right, np.where(known, np.where(met, 0.0, -1.0), np.nan)
             )
-        ahead = right - left if comparison.operator in ("<=", "<") else left - right
+        ahead = right - left if operator in ("<=", "<") else left - right
         plain = not ((size == 0.0).any() or np.isinf(size).any() or np.isinf(left).any())
         if plain:
             # Finite values and limits that are not zero, as most are: the same in fewer passes.
-            slack = TOLERANCE * size
-            met = ahead >= -slack if comparison.operator in ("<=", ">=") else ahead > slack
+            met = holds(operator, ahead, TOLERANCE * size)
             return Judgement(known, met, left, right, ahead / size)
         both_endless = np.isinf(left) & np.isinf(right) & (np.sign(left) == np.sign(right))
         ahead = np.where(both_endless, 0.0, ahead)
-        slack = np.where(np.isinf(size), 0.0, TOLERANCE * size)
-        met = ahead >= -slack if comparison.operator in ("<=", ">=") else ahead > slack
+        met = holds(operator, ahead, np.where(np.isinf(size), 0.0, TOLERANCE * size))
         scale = np.where(
             size > 0, np.where(np.isinf(size), 1.0, size), np.maximum(np.abs(left), 1e-300)
         )
