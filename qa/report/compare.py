@@ -18,6 +18,7 @@ from qa.model.errors import InputError
 from qa.model.json_text import json_text
 from qa.model.log import Floats
 from qa.report import numbers, pages, tracks
+from qa.report.files import write_text
 from qa.report.tracks import EARTH, Track
 from qa.report.words import word
 
@@ -145,9 +146,8 @@ def compare_audits(
     if out is not None:
         target = Path(out)
         target.mkdir(parents=True, exist_ok=True)
-        text = json_text(result.to_dict())
-        (target / "compare.json").write_bytes(text.encode("utf-8", "replace"))
-        (target / "compare.html").write_bytes(page(result, old, new).encode("utf-8", "replace"))
+        write_text(target / "compare.json", json_text(result.to_dict()))
+        write_text(target / "compare.html", page(result, old, new))
     return result
 
 

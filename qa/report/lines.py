@@ -9,6 +9,7 @@ from pathlib import Path
 from qa.model.findings import LineResult
 from qa.report import charts, drawing, panels, ping_table, tracks
 from qa.report.charts import GrowthPoints
+from qa.report.files import write_text
 from qa.report.tracks import Places, Track
 from qa.report.words import word
 
@@ -94,9 +95,7 @@ def write_line(result: LineResult, folder: Path, number: int, identity: str = ""
     figures, pings = line_files(folder, number)
     figures.parent.mkdir(parents=True, exist_ok=True)
     kept = [f for f in drawn if f is not None]
-    # A file's name may hold bytes that are no text; they are replaced, here as in the report.
-    text = json.dumps(kept, ensure_ascii=False, separators=(",", ":"))
-    figures.write_bytes(text.encode("utf-8", "replace"))
+    write_text(figures, json.dumps(kept, ensure_ascii=False, separators=(",", ":")))
     ping_table.write_part(result, pings)
     return LineArtifacts(
         line=name,

@@ -13,6 +13,7 @@ from qa.model.findings import Findings
 from qa.model.json_text import json_text
 from qa.model.log import RejectedRow
 from qa.report import ping_table, tables
+from qa.report.files import write_text
 from qa.report.lines import LineArtifacts
 from qa.report.pages import Report
 
@@ -82,9 +83,3 @@ def _write_pages(report: Report, folder: Path, put_page: PutPage | None) -> Path
             else:
                 put_page(page, report.line_inputs(n), partial(report.line, n))
     return path
-
-
-def write_text(path: Path, text: str) -> None:
-    """Write a file of the report."""
-    # Names of files may hold bytes that are no text; what cannot be written is replaced, never lost with the file.
-    path.write_bytes(text.encode("utf-8", "replace"))

@@ -188,7 +188,8 @@ class Report:
     def line_inputs(self, index: int) -> bytes:
         """All that one line's own page is made from, but for the program: pages of the same are the same."""
         line = self.findings.lines[index]
-        views = [self.views[n] for n in self.conclusions.sections_of.get(line.line, ())]
+        views = self._views_of(line.line)
+        rules = {r.id for r in line.rules} | {v.section.rule for v in views}
         sections = self.marker.look_up("/sections")
         artifact = self.artifacts[index]
         figures = b"" if artifact is None else Path(artifact.figures).read_bytes()
@@ -198,10 +199,12 @@ class Report:
             self.many,
             self.marker.look_up(f"/lines/{index}"),
             [[v.at, v.anchor, v.figure, v.page, v.fails, sections[v.index]] for v in views],
-            {r.id: self.conclusions.titles.get(r.id) for r in (*line.rules,)},
-            {v.section.rule: self.conclusions.titles.get(v.section.rule) for v in views},
+            {rule: self.conclusions.titles.get(rule) for rule in sorted(rules)},
         ]
         return json.dumps(about).encode() + hashlib.sha256(figures).digest()
+
+    def _views_of(self, line: str) -> list[SectionView]:
+        return [self.views[n] for n in self.conclusions.sections_of.get(line, ())]
 
     def line(self, index: int) -> str:
         """One line's own page."""
@@ -255,7 +258,7 @@ class Report:
 
     def _block(self, index: int) -> dict[str, Any]:
         line = self.findings.lines[index]
-        views = [self.views[n] for n in self.conclusions.sections_of.get(line.line, ())]
+        views = self._views_of(line.line)
         artifact = self.artifacts[index]
         return {
             "at": f"/lines/{index}",

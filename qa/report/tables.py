@@ -11,6 +11,7 @@ from qa.model.findings import Findings, Section
 from qa.model.json_text import json_text
 from qa.model.log import RejectedRow
 from qa.report.conclusions import fails
+from qa.report.files import write_text
 from qa.report.tracks import Places
 
 SECTION_COLUMNS = (
@@ -72,8 +73,7 @@ def write_rerun(findings: Findings, places: Mapping[str, Places], path: Path) ->
     if not positioned and not any(places.values()):
         return False
     collection = {"type": "FeatureCollection", "features": features}
-    text = json_text(collection)
-    path.write_bytes(text.encode("utf-8", "replace"))
+    write_text(path, json_text(collection))
     return True
 
 
