@@ -69,6 +69,10 @@ class Content:
             return False
         return (now.st_size, now.st_mtime_ns) == (self.bytes, self.changed)
 
+    def settled(self, path: Path) -> bool:
+        """Whether they are the same now and will tell this content from any other, within a file system's clock."""
+        return self.still(path) and time.time_ns() - self.changed > SETTLED
+
 
 @dataclass(slots=True)
 class Kept:
@@ -114,7 +118,7 @@ class Kept:
         with path.open("rb") as stream:
             sha = hashlib.file_digest(stream, "sha256").hexdigest()
         found = Content(sha, now.st_size, now.st_mtime_ns)
-        if found.still(path) and time.time_ns() - now.st_mtime_ns > SETTLED:
+        if found.settled(path):
             text = json.dumps(
                 {"sha256": sha, "bytes": found.bytes, "changed": found.changed}
             ).encode()

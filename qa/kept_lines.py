@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import datetime as dt
 import shutil
-import time
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
@@ -12,7 +11,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from qa.fingerprints import fingerprint, of_program
-from qa.kept import SETTLED, Content, Kept
+from qa.kept import Content, Kept
 from qa.model.cast import Cast
 from qa.model.survey_file import SurveyFile
 from qa.report import renumbered, write_text
@@ -67,10 +66,9 @@ def _in_common(job: LineJob, own: SurveyFile, cast_of: CastOf) -> str:
     limits = [
         (x.name, x.text, str(x.unit), x.about, x.source, x.origin) for x in sheet.limits.values()
     ]
-    said = replace(own, path=None, sha256="", name="", sheet="", limits={}, parts=(), profile=None)
     return fingerprint(
         of_program(),
-        said,
+        own.of_one_log(),
         cast_of(own),
         (sheet.name, sheet.sha256, sheet.extends, list(sheet.rules), limits),
         None if job.sheet.python is None else job.sheet.python.sha256,
@@ -97,15 +95,15 @@ def remembered(kept: Kept, path: Path, about: tuple[object, ...], make: Callable
         now = path.stat()
     except OSError:
         return make()
-    stamp = (now.st_size, now.st_mtime_ns)
+    here = Content("", now.st_size, now.st_mtime_ns)
     key = f"{_FILE}-{fingerprint(of_program(), path.resolve(), about)}"
     if not kept.rehash:
         before = kept.look(key)
-        if before is not None and before[0] == stamp:
+        if before is not None and before[0] == here:
             return before[1]
     found = make()
-    if time.time_ns() - now.st_mtime_ns > SETTLED and Content("", *stamp).still(path):
-        kept.store(key, (stamp, found))
+    if here.settled(path):
+        kept.store(key, (here, found))
     return found
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import glob
 import re
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import partial
 from pathlib import Path, PurePosixPath
 from typing import Any
@@ -86,10 +86,8 @@ def plan_logs(
             if remembered is None:
                 found_probe, span = look()
             else:
-                facts = replace(own, path=None, sha256="", name="", sheet="", limits={}, parts=())
-                found_probe, span = remembered(
-                    path, (shown, facts, folder_values, len(found) > 1), look
-                )
+                about = (shown, own.of_one_log(), folder_values, len(found) > 1)
+                found_probe, span = remembered(path, about, look)
             probes.append((found_probe, own))
             spans[shown] = span
         except InputError as error:

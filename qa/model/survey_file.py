@@ -161,6 +161,12 @@ class SurveyFile:
                 here = _overlaid(here, tables)
         return here
 
+    def of_one_log(self) -> SurveyFile:
+        """Only what it says of the log that :meth:`for_log` was asked for: neither the survey's own facts nor limits."""
+        return replace(
+            self, path=None, sha256="", name="", sheet="", limits={}, parts=(), profile=None
+        )
+
 
 def _matches(log: str, pattern: str, folder: Path) -> bool:
     wanted = (folder / pattern).as_posix() if not Path(pattern).is_absolute() else pattern
