@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from qa.ingest import spill
 from qa.ingest.apart import ScatteredPlaces, in_order
-from qa.ingest.messages import MEASURED, MESSAGE_SHARE, SET, Repeats, find_repeats
+from qa.ingest.messages import MEASURED, MESSAGE_SHARE, SET, Repeats, as_before, find_repeats
 from qa.ingest.probe import FileProbe
 from qa.ingest.rows import Integers, Names, RowReader, Rows, Stretch
 from qa.ingest.second_reading import ReadBefore, SecondReading
@@ -362,7 +362,7 @@ class OpenedLine:
         self, rows: Rows, last: dict[str, Any] | None, reader: RowReader
     ) -> tuple[Rows, dict[str, Any] | None]:
         """A beam's row that stands twice in a row counts once; pings are looked at when all are known."""
-        if self._grain != "beam" or (not rows.one_each and (rows.counts != 1).any()):
+        if self._grain != "beam" or not rows.of_one_beam:
             return rows, None
         # What differs soonest comes first: the beam's number from row to row.
         beam = {"beam": rows.beams["beam"]} if "beam" in rows.beams else {}
@@ -389,9 +389,7 @@ class OpenedLine:
         following = ends(-1)
         alike: NDArray[np.bool_] | None = None
         for values in now.values():
-            equal = values[1:] == values[:-1]
-            if values.dtype.kind == "f" and not equal.all():
-                equal |= np.isnan(values[1:]) & np.isnan(values[:-1])
+            equal = as_before(values)
             alike = equal if alike is None else alike & equal
             if not alike.any():
                 break
@@ -703,8 +701,7 @@ class OpenedLine:
         same: NDArray[np.bool_] = (np.diff(ping[rows]) == 0) & (np.diff(channel[rows]) == 0)
         if same.any():
             for values in self._values_of_pings(len(ping)):
-                here = values[rows]
-                same &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+                same &= as_before(values[rows])
         return same
 
     def _values_of_pings(
@@ -771,8 +768,7 @@ class OpenedLine:
         again &= np.diff(arrays["beam"][row_order], prepend=np.nan) == 0
         equal = again.copy()
         for values in arrays.values():
-            here = np.asarray(values[row_order], dtype=float)
-            equal[1:] &= (np.diff(here) == 0) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+            equal[1:] &= as_before(np.asarray(values[row_order]))
         apart = np.isin(group, in_group[again & ~equal])
         if apart.any():
             if apart[kept].all():
@@ -1043,7 +1039,7 @@ def _beam_roles(probe: FileProbe) -> set[str]:
 
 
 def _beam_number(rows: Rows) -> NDArray[Any] | None:
-    return rows.beams.get("beam") if rows.one_each or (rows.counts == 1).all() else None
+    return rows.beams.get("beam") if rows.of_one_beam else None
 
 
 def _first_known(

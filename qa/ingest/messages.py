@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -81,8 +81,7 @@ def find_repeats(
     order = np.argsort(source, kind="stable")
     same = (np.diff(source[order]) == 0) & (np.diff(time[order]) > 0)
     for values in (*measured, *settings):
-        here = values[order]
-        same &= (here[1:] == here[:-1]) | (np.isnan(here[1:]) & np.isnan(here[:-1]))
+        same &= as_before(values[order])
     known = np.logical_or.reduce([~np.isnan(values[order]) for values in measured])
     same &= known[1:]
     if not stated and same.mean() <= MESSAGE_SHARE:
@@ -105,6 +104,14 @@ def find_repeats(
     found = np.zeros(n, dtype=bool)
     found[order] = again
     return Repeats("messages", found, usual)
+
+
+def as_before(values: NDArray[Any]) -> Mask:
+    """Which values, from the second on, are those before them; a missing one is as another."""
+    equal: Mask = values[1:] == values[:-1]
+    if values.dtype.kind == "f" and not equal.all():
+        equal |= np.isnan(values[1:]) & np.isnan(values[:-1])
+    return equal
 
 
 def _no_accident(same: Mask, starts: Integers, measured: Sequence[Floats], beams: int) -> bool:

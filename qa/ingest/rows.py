@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator, Mapping
+from collections.abc import Generator, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -58,6 +58,11 @@ class Rows:
 
     def __len__(self) -> int:
         return len(self.numbers)
+
+    @property
+    def of_one_beam(self) -> bool:
+        """Whether each row has one beam, or is one."""
+        return self.one_each or bool((self.counts == 1).all())
 
     def take(self, kept: NDArray[np.bool_]) -> Rows:
         """Some of the rows, by mask."""
@@ -164,8 +169,7 @@ class RowReader:
         opened = self.probe.open()
         if isinstance(opened, TableSource):
             try:
-                groups = self._groups(opened)
-                for group in range(len(opened.groups)) if groups is None else groups:
+                for group in self._groups(opened):
                     yield from self._part(opened, group, list(sources))
             finally:
                 opened.close()
@@ -216,9 +220,9 @@ class RowReader:
         finally:
             opened.close()
 
-    def _groups(self, opened: TableSource) -> list[int] | None:
+    def _groups(self, opened: TableSource) -> Sequence[int]:
         if self.stretch is None or self.probe.times.rolls_over:
-            return None
+            return range(len(opened.groups))
         ends = np.cumsum(opened.groups)
         needed = []
         for group, (end, count) in enumerate(zip(ends.tolist(), opened.groups, strict=True)):
