@@ -13,9 +13,9 @@ from qa.engine.beam_rules import Misses, WorstBeams, judge_beams
 from qa.engine.expressions import Judgement, judge
 from qa.engine.plans import Node, Plan, PlannedRule, closure
 from qa.engine.reducers import Groups, reduce_beams
-from qa.engine.side_by_side import in_order
 from qa.model.findings import EXEMPT, MET, MISSED, NOT_ASSESSED, BeamMisses, RuleSeries
 from qa.model.log import BeamBatch, ChannelSpan, Floats, LineLog, PingTable
+from qa.model.side_by_side import in_order
 
 BATCH_ROWS = 100_000
 KEPT_BYTES = 1 << 24

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Generator, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -11,7 +11,6 @@ import pyarrow as pa
 import pyarrow.compute as pc
 from numpy.typing import NDArray
 
-from qa.ingest.ahead import ahead
 from qa.ingest.names import Binding
 from qa.ingest.probe import SIDES, FileProbe
 from qa.ingest.proofs import NO_PROOF, Proof, counts_of, proven, unread
@@ -30,6 +29,7 @@ from qa.ingest.values import (
 from qa.model.columns import COLUMNS
 from qa.model.errors import InputError
 from qa.model.log import KEPT_REJECTS, NO_TIME, FileAccount, RejectedRow
+from qa.model.side_by_side import in_order
 
 Integers = NDArray[np.int64]
 WHOLE = ("ping", "beam")
@@ -148,7 +148,7 @@ class RowReader:
 
     def batches(self) -> Iterator[Rows]:
         """The file's rows, batch after batch, in file order."""
-        for raw, proof in ahead(self._raw()) if self._lazy else self._raw():
+        for raw, proof in self._raw():
             yield self.convert(raw, proof)
         if self.state.leap_seconds:
             self.account.notes.append(
@@ -164,13 +164,15 @@ class RowReader:
             sources[side.source] = pa.string()
         return sources
 
-    def _raw(self) -> Generator[tuple[RawBatch, Proof], None, None]:
+    def _raw(self) -> Iterator[tuple[RawBatch, Proof]]:
         sources = self.kinds()
         opened = self.probe.open()
         if isinstance(opened, TableSource):
+            groups = self._groups(opened)
+            read = (item for g in groups for item in self._part(opened, g, list(sources)))
             try:
-                for group in self._groups(opened):
-                    yield from self._part(opened, group, list(sources))
+                # The next batch is read while the caller works on this one.
+                yield from in_order(read, lambda item: item, pa.cpu_count() if self._lazy else 1)
             finally:
                 opened.close()
             return

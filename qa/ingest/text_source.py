@@ -7,7 +7,6 @@ import io
 import itertools
 import re
 from collections.abc import Callable, Generator, Iterator, Mapping, Sequence
-from concurrent.futures import Future, ThreadPoolExecutor
 from contextlib import closing
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -20,6 +19,7 @@ from numpy.typing import NDArray
 
 from qa.ingest.dialect import SAMPLE_BYTES, Dialect, find_dialect, find_encoding
 from qa.model.errors import InputError
+from qa.model.side_by_side import in_order
 
 BLOCK = 1 << 22
 LONGEST_ROW = 1 << 22
@@ -317,28 +317,8 @@ class TextSource:
                         data = first.data[:cut]
                         first = _Block(data, first.first, data.count(b"\n"))
                     yield self._parse(first, kinds)
-            elif threads <= 1:
-                for block in blocks:
-                    yield self._parse(block, kinds)
             else:
-                yield from self._parsed(blocks, kinds, threads)
-
-    def _parsed(
-        self, blocks: Iterator[_Block], kinds: Mapping[str, pa.DataType], threads: int
-    ) -> Iterator[RawBatch]:
-        """Blocks parsed side by side, in their order."""
-        with ThreadPoolExecutor(threads) as pool:
-            waiting: list[Future[RawBatch]] = []
-            try:
-                for block in blocks:
-                    waiting.append(pool.submit(self._parse, block, kinds))
-                    if len(waiting) > threads:
-                        yield waiting.pop(0).result()
-                while waiting:
-                    yield waiting.pop(0).result()
-            finally:
-                for future in waiting:
-                    future.cancel()
+                yield from in_order(blocks, lambda block: self._parse(block, kinds), threads)
 
     @property
     def seekable(self) -> bool:

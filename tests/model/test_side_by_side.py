@@ -4,11 +4,11 @@ from __future__ import annotations
 
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Generator, Iterator
 
 import pytest
 
-from qa.engine.side_by_side import in_order
+from qa.model.side_by_side import in_order
 
 
 @pytest.mark.parametrize("threads", [1, 2, 5])
@@ -66,3 +66,51 @@ def test_what_fails_is_raised(threads: int, at_fault: str) -> None:
         for result in in_order(batches(), work, threads):
             found.append(result)
     assert found == list(range(len(found)))
+
+
+def _items(made: list[int], closed: list[bool], count: int = 20) -> Generator[int, None, None]:
+    try:
+        for n in range(count):
+            made.append(threading.get_ident())
+            yield n
+    finally:
+        closed.append(True)
+
+
+def _as_it_is(item: int) -> int:
+    return item
+
+
+@pytest.mark.parametrize("threads", [1, 2])
+def test_what_is_only_read_is_read_ahead(threads: int) -> None:
+    made: list[int] = []
+    closed: list[bool] = []
+    assert list(in_order(_items(made, closed), _as_it_is, threads)) == list(range(20))
+    assert closed == [True]
+    elsewhere = {thread != threading.get_ident() for thread in made}
+    assert elsewhere == {threads > 1}
+
+
+@pytest.mark.parametrize("threads", [1, 2])
+def test_one_that_is_left_early_is_closed_and_not_read_to_its_end(threads: int) -> None:
+    made: list[int] = []
+    closed: list[bool] = []
+    stream = in_order(_items(made, closed, 1000), _as_it_is, threads)
+    assert [next(stream), next(stream)] == [0, 1]
+    stream.close()
+    assert closed == [True]
+    assert len(made) < 10
+
+
+@pytest.mark.parametrize("threads", [1, 2])
+def test_what_fails_is_raised_where_its_turn_comes(threads: int) -> None:
+    def failing() -> Generator[int, None, None]:
+        yield 1
+        yield 2
+        raise OSError("gone")
+
+    found = []
+    with pytest.raises(OSError, match="gone"):
+        for item in in_order(failing(), _as_it_is, threads):
+            found.append(item)
+    assert found == [1, 2]
