@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
@@ -342,7 +342,8 @@ class _Assembly:
 
     def _missing_reason(self, planned: Sequence[PlannedRule]) -> str:
         names = list(dict.fromkeys(n for p in planned for n in p.missing))
-        return missing_text(names, self.sheet)
+        stated = {name for computed in self.done for name in computed.plan.available.stated}
+        return missing_text(names, self.sheet, stated)
 
     def _empty_reason(self, planned: Sequence[PlannedRule], status: NDArray[np.int8]) -> str:
         if (status == EXEMPT).all():
@@ -661,8 +662,8 @@ def _span_mask(n: int, first: int, last: int) -> NDArray[np.bool_]:
     return mask
 
 
-def missing_text(names: Sequence[str], sheet: RuleSheet) -> str:
-    """Which input a rule lacks, in words."""
+def missing_text(names: Sequence[str], sheet: RuleSheet, said: Collection[str]) -> str:
+    """Which input a rule lacks, in words; of what was ``said`` in the survey file it lacks what is logged."""
     if not names:
         return "an input is missing"
     limits = [n for n in names if n in sheet.limits]
@@ -670,7 +671,7 @@ def missing_text(names: Sequence[str], sheet: RuleSheet) -> str:
     parts = []
     if limits:
         parts.append(f"{_and(limits)} {'is' if len(limits) == 1 else 'are'} not stated")
-    stated = [n for n in others if quantities.is_stated_key(n)]
+    stated = [n for n in others if quantities.is_stated_key(n) and n not in said]
     logged = [n for n in others if n not in stated]
     if stated:
         parts.append(

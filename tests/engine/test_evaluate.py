@@ -198,6 +198,16 @@ def test_missing_target_is_named(run: Any, swath: Any, multibeam: dict[str, Any]
     assert rule.pings_not_assessed == 60
 
 
+def test_what_is_stated_but_must_be_logged_is_said_to_be_not_logged(
+    run: Any, swath: Any, multibeam: dict[str, Any]
+) -> None:
+    assert "sound_speed" in multibeam
+    found = run(swath(20), multibeam, {}).rule("sound-speed")
+    assert found.verdict == "not assessed"
+    assert "sound_speed is not logged" in found.reason
+    assert "temperature and salinity are neither logged nor stated" in found.reason
+
+
 def test_missing_setting_is_named(run: Any, swath: Any, multibeam: dict[str, Any]) -> None:
     stated = {k: v for k, v in multibeam.items() if k != "beamwidth_along"}
     rule = run(swath(), stated, TARGET).rule("along-resolution")
